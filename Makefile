@@ -1,0 +1,61 @@
+# make            build/flatgain, build/libflatgain.a, build/libflatgain.so
+# make test       everything tests/run.sh runs (it also installs what is missing)
+# make bench      speed figures as ratios in one run
+# make install    PREFIX=/usr/local DESTDIR=
+# Variants: make BUILD=build/asan SANITIZE=address,undefined
+CC ?= cc
+PREFIX ?= /usr/local
+BUILD ?= build
+OPT ?= -O2
+WARN = -Wall -Wextra -Wpedantic -Wshadow -Wstrict-prototypes -Wmissing-prototypes -Wconversion -Wno-sign-conversion
+WERROR ?=
+PACKAGES = nlopt lapack blas yaml-0.1 libcjson
+PKG_CFLAGS := $(shell pkg-config --cflags $(PACKAGES))
+PKG_LIBS := $(shell pkg-config --libs $(PACKAGES)) -lm -lpthread -ldl
+SAN = $(if $(SANITIZE),-fsanitize=$(SANITIZE) -fno-omit-frame-pointer -fno-sanitize-recover=all)
+override CFLAGS += -std=c11 -D_GNU_SOURCE $(OPT) -g $(WARN) $(WERROR) $(SAN) -fPIC -fvisibility=hidden -Iinclude -Isrc $(PKG_CFLAGS) -MMD -MP
+override LDFLAGS += $(SAN)
+
+LIB_SRC := $(sort $(wildcard src/base/*.c src/linalg/*.c src/problem/*.c src/plant/*.c src/design/*.c src/assess/*.c src/write/*.c src/api/*.c))
+CLI_SRC := $(sort $(wildcard src/cli/*.c))
+LIB_OBJ := $(LIB_SRC:%.c=$(BUILD)/%.o)
+CLI_OBJ := $(CLI_SRC:%.c=$(BUILD)/%.o)
+TEST_SRC := $(sort $(wildcard tests/unit/test_*.c))
+TESTS := $(TEST_SRC:tests/unit/%.c=$(BUILD)/tests/%)
+
+.PHONY: all lib tests test bench install format clean
+all: $(BUILD)/flatgain $(BUILD)/libflatgain.so
+lib: $(BUILD)/libflatgain.a $(BUILD)/libflatgain.so
+tests: $(TESTS)
+
+$(BUILD)/%.o: %.c
+	@mkdir -p $(@D)
+	$(CC) $(CFLAGS) -c -o $@ $<
+
+$(BUILD)/libflatgain.a: $(LIB_OBJ)
+	@rm -f $@
+	$(AR) rcs $@ $^
+
+$(BUILD)/libflatgain.so: $(LIB_OBJ)
+	$(CC) $(LDFLAGS) -shared -Wl,-soname,libflatgain.so.0 -o $@ $^ $(PKG_LIBS)
+
+$(BUILD)/flatgain: $(CLI_OBJ) $(BUILD)/libflatgain.a
+	$(CC) $(LDFLAGS) -o $@ $(CLI_OBJ) $(BUILD)/libflatgain.a $(PKG_LIBS)
+
+# Test programs: one per tests/unit/test_*.c; helpers in tests/unit/ that do not start with test_.
+HELP_SRC := $(filter-out $(TEST_SRC),$(wildcard tests/unit/*.c))
+HELP_OBJ := $(HELP_SRC:%.c=$(BUILD)/%.o)
+$(BUILD)/tests/%: $(BUILD)/tests/unit/%.o $(HELP_OBJ) $(BUILD)/libflatgain.a
+	@mkdir -p $(@D)
+	$(CC) $(LDFLAGS) -o $@ $< $(HELP_OBJ) $(BUILD)/libflatgain.a $(PKG_LIBS) -lslicot $(shell pkg-config --libs check) -lgfortran
+
+test:
+	sh tests/run.sh
+
+format:
+	clang-format -i $(shell git ls-files '*.c' '*.h')
+
+clean:
+	rm -rf build
+
+-include $(LIB_OBJ:.o=.d) $(CLI_OBJ:.o=.d) $(TEST_SRC:%.c=$(BUILD)/%.d) $(HELP_SRC:%.c=$(BUILD)/%.d)

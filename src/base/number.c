@@ -1,0 +1,88 @@
+#include "base/number.h"
+
+#include <ctype.h>
+#include <math.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+/* printf and strtod use the decimal mark of the process's locale; replacing it is enough for us,
+ * since no other locale property reaches %g or strtod. */
+static void mark_to_point(char *text)
+{
+    for (; *text; text++)
+        if (*text == ',')
+            *text = '.';
+}
+
+static double read_in_locale(char *text)
+{
+    double value = strtod(text, NULL);
+    char probe[8];
+    snprintf(probe, sizeof probe, "%.1f", 0.5);
+    char *point = strchr(text, '.');
+    if (probe[1] != '.' && point) {
+        *point = probe[1];
+        value = strtod(text, NULL);
+        *point = '.';
+    }
+    return value;
+}
+
+void fg_number_exact(double value, char text[FG_NUMBER_SIZE])
+{
+    for (int digits = 15; digits <= 17; digits++) {
+        snprintf(text, FG_NUMBER_SIZE, "%.*g", digits, value);
+        mark_to_point(text);
+        if (digits == 17 || read_in_locale(text) == value)
+            break;
+    }
+}
+
+void fg_number_round(double value, int digits, char text[FG_NUMBER_SIZE])
+{
+    if (isnan(value))
+        snprintf(text, FG_NUMBER_SIZE, "nan");
+    else if (isinf(value))
+        snprintf(text, FG_NUMBER_SIZE, value > 0 ? "inf" : "-inf");
+    else
+        snprintf(text, FG_NUMBER_SIZE, "%.*g", digits, value == 0 ? 0.0 : value);
+    mark_to_point(text);
+}
+
+enum fg_number_fault fg_number_read(const char *text, size_t length, double *value)
+{
+    const char *at = text, *end = text + length;
+    size_t whole = 0, part = 0;
+    if (at < end && (*at == '+' || *at == '-'))
+        at++;
+    for (; at < end && isdigit((unsigned char)*at); at++)
+        whole++;
+    if (at < end && *at == '.')
+        for (at++; at < end && isdigit((unsigned char)*at); at++)
+            part++;
+    if (whole + part == 0)
+        return FG_NUMBER_NOT;
+    if (at < end && (*at == 'e' || *at == 'E')) {
+        at++;
+        if (at < end && (*at == '+' || *at == '-'))
+            at++;
+        size_t exponent = 0;
+        for (; at < end && isdigit((unsigned char)*at); at++)
+            exponent++;
+        if (exponent == 0)
+            return FG_NUMBER_NOT;
+    }
+    if (at != end)
+        return FG_NUMBER_NOT;
+    char small[400];
+    char *copy = length < sizeof small ? small : malloc(length + 1);
+    if (!copy)
+        return FG_NUMBER_NOT;
+    memcpy(copy, text, length);
+    copy[length] = '\0';
+    *value = read_in_locale(copy);
+    if (copy != small)
+        free(copy);
+    return isfinite(*value) ? FG_NUMBER_OK : FG_NUMBER_TOO_LARGE;
+}
