@@ -1,0 +1,33 @@
+/* J(K) with gradient and Hessian in the free gains, from one real Schur form (docs/method.md).
+ * After fg_cost_new nothing is allocated. One evaluator per thread; the plant is shared and constant. */
+#ifndef FG_DESIGN_COST_H
+#define FG_DESIGN_COST_H
+
+#include "plant/model.h"
+
+struct fg_cost; /* opaque */
+
+/* An evaluator for `plant` with the gains of `pattern`; both must outlive it. Memory from the arena;
+ * NULL when memory is out. */
+struct fg_cost *fg_cost_new(const struct fg_plant *plant, const struct fg_pattern *pattern,
+                            struct fg_arena *arena);
+
+/* Stability asked for: continuous Re < -margin, discrete |z| < 1 - margin. Default 0. */
+void fg_cost_margin(struct fg_cost *cost, double margin);
+
+/* J of K (m x p column-major); INFINITY when the loop is not stable, ill posed or not finite. */
+double fg_cost_value(struct fg_cost *cost, const double *K);
+/* The same for parameters theta (q). */
+double fg_cost_at(struct fg_cost *cost, const double *theta);
+
+/* Derivatives at the point of the last fg_cost_value / fg_cost_at that returned a finite J. */
+void fg_cost_gradient(struct fg_cost *cost, double *gradient); /* q */
+void fg_cost_gradient_full(struct fg_cost *cost, double *gradient); /* m x p, dJ/dK */
+void fg_cost_hessian(struct fg_cost *cost, double *hessian);   /* q x q, symmetric */
+
+/* Of the last point, also an unstable one: largest real part (radius in the discrete setting), and the
+ * closed-loop poles. NAN when ill posed. */
+double fg_cost_abscissa(const struct fg_cost *cost);
+void fg_cost_poles(const struct fg_cost *cost, const double **re, const double **im);
+
+#endif
