@@ -20,8 +20,9 @@ size_t fg_lyapunov_work(int n);
 /* X over C, as above. The result need not be finite when two eigenvalues of T add up to 0 (continuous)
  * or multiply to 1 (discrete): the caller tests stability first. */
 void fg_lyapunov_schur(bool discrete, int n, const double *T, double *C, double *work);
-/* The dual equation. */
-void fg_lyapunov_schur_dual(bool discrete, int n, const double *T, double *C, double *work);
+/* The dual equation; `reversed` is T with rows and columns reversed and transposed, made once per T. */
+void fg_lyapunov_reversed(int n, const double *T, double *reversed);
+void fg_lyapunov_schur_dual(bool discrete, int n, const double *reversed, double *C, double *work);
 
 /* Convenience for cold code: solves A X + X A' + C = 0 (or A X A' - X + C = 0) for general A.
  * Returns false when A has an eigenvalue not strictly stable or the solution is not finite.
