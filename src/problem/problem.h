@@ -30,23 +30,24 @@ struct fg_pattern {
 };
 
 struct fg_signal {
-    const char *name;   /* never NULL: "u1", "y1", "x1" when the user gave none */
-    const char *unit;   /* "" when none */
-    double lag;         /* outputs: time constant of the sensor filter, 0 = none */
-    bool lag_in_plc;    /* outputs: the PLC does the filtering, so the law contains it */
+    const char *name; /* never NULL: "u1", "y1", "x1" when the user gave none */
+    const char *unit; /* "" when none */
+    double lag;       /* outputs: time constant of the sensor filter, 0 = none */
+    bool lag_in_plc;  /* outputs: the PLC does the filtering, so the law contains it */
 };
 
 struct fg_problem_warning {
     const char *code; /* short, stable: "weight-projected" */
     const char *text; /* with the place */
+    long line;        /* in the problem file, 0 without one */
     struct fg_problem_warning *next;
 };
 
 struct flatgain_problem {
     struct fg_arena arena; /* owns everything below */
     atomic_int references;
-    const char *title;     /* "" when none */
-    const char *path;      /* as given; "" from memory */
+    const char *title; /* "" when none */
+    const char *path;  /* as given; "" from memory */
     enum fg_setting setting;
     enum fg_reading reading;
     const char *time_unit; /* "" when none; "step" in the discrete setting */
@@ -61,10 +62,11 @@ struct flatgain_problem {
     bool named_inputs, named_outputs, named_states; /* the user gave names */
     struct fg_pattern pattern;
     bool has_today;
-    struct fg_matrix today;    /* m x p */
-    double accept_percent;     /* NAN = not stated */
+    struct fg_matrix today;              /* m x p */
+    const double *today_rows;            /* the same, row-major, or NULL: for the public header */
+    double accept_percent;               /* NAN = not stated */
     struct fg_problem_warning *warnings; /* in the order of the file */
-    uint64_t hash;             /* FNV-1a of the normalised numbers and names: changes with any of them */
+    uint64_t hash; /* FNV-1a of the normalised numbers and names: changes with any of them */
 };
 
 /* Checks shared by both ways of making a problem, and fills in defaults: sizes agree, weights
@@ -73,6 +75,9 @@ struct flatgain_problem {
 struct fg_places; /* reader's table of key -> line, column; NULL without a file */
 flatgain_status fg_problem_check(struct flatgain_problem *problem, const struct fg_places *where,
                                  flatgain_error *error);
+
+/* A new reference to an immutable problem; flatgain_problem_free gives it back. */
+flatgain_problem *fg_problem_retain(const flatgain_problem *problem);
 
 /* K (m x p) from parameters theta (q). */
 void fg_pattern_gain(const struct fg_pattern *pattern, const double *theta, double *K);
