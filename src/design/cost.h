@@ -15,6 +15,10 @@ struct fg_cost *fg_cost_new(const struct fg_plant *plant, const struct fg_patter
 /* Stability asked for: continuous Re < -margin, discrete |z| < 1 - margin. Default 0. */
 void fg_cost_margin(struct fg_cost *cost, double margin);
 
+/* Evaluates a shifted plant instead: continuous A - shift I, discrete A / shift and B / shift. Default
+ * 0 and 1. fg_cost_abscissa stays that of the plant itself; fg_cost_poles are those of the shifted one. */
+void fg_cost_shift(struct fg_cost *cost, double shift);
+
 /* J of K (m x p column-major); INFINITY when the loop is not stable, ill posed or not finite. */
 double fg_cost_value(struct fg_cost *cost, const double *K);
 /* The same for parameters theta (q). */
@@ -22,12 +26,15 @@ double fg_cost_at(struct fg_cost *cost, const double *theta);
 
 /* Derivatives at the point of the last fg_cost_value / fg_cost_at that returned a finite J. */
 void fg_cost_gradient(struct fg_cost *cost, double *gradient); /* q */
-void fg_cost_gradient_full(struct fg_cost *cost, double *gradient); /* m x p, dJ/dK */
+void fg_cost_gradient_full(struct fg_cost *cost, double *gradient); /* m x p column-major, dJ/dK */
 void fg_cost_hessian(struct fg_cost *cost, double *hessian);   /* q x q, symmetric */
 
 /* Of the last point, also an unstable one: largest real part (radius in the discrete setting), and the
  * closed-loop poles. NAN when ill posed. */
 double fg_cost_abscissa(const struct fg_cost *cost);
+/* Its gradient in theta (q) at the last point, stable or not, where it is differentiable (one of the
+ * rightmost poles is taken where several meet). false: no eigenvector could be computed. */
+bool fg_cost_abscissa_gradient(struct fg_cost *cost, double *gradient);
 void fg_cost_poles(const struct fg_cost *cost, const double **re, const double **im);
 
 #endif

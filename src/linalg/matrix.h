@@ -23,6 +23,12 @@ struct fg_matrix fg_matrix_identity(struct fg_arena *arena, int n);
 struct fg_matrix fg_matrix_from_rows(struct fg_arena *arena, int rows, int cols, const double *rowmajor);
 void fg_matrix_to_rows(struct fg_matrix a, double *rowmajor);
 
+/* Memory in hand seen as a matrix. */
+static inline struct fg_matrix fg_matrix_view(double *at, int rows, int cols)
+{
+    return (struct fg_matrix){rows, cols, at};
+}
+
 /* C = alpha op(A) op(B) + beta C, op = transpose where the character is 'T', as it is for 'N'. */
 void fg_multiply(char ta, char tb, double alpha, struct fg_matrix a, struct fg_matrix b, double beta,
                  struct fg_matrix c);

@@ -1,0 +1,277 @@
+#include "design/local.h"
+
+#include <math.h>
+#include <string.h>
+
+#include "linalg/lapack.h"
+
+/* Relative sizes, all without unit. TOLERANCE: at a Newton step that converges quadratically the next
+ * residual would be of the order of its square. LIMIT: a million times the natural size of a gain. */
+static const double TOLERANCE = 1e-10, ACCEPTABLE = 1e-6, LIMIT = 1e6, TINY_RADIUS = 1e-11;
+static const double NOISE = 1e-12; /* relative rounding error of J that steps are judged with */
+
+struct fg_local {
+    int q;
+    double *gradient, *hessian, *step, *trial, *best;
+    double *small, *vectors, *values, *rhs, *reduced, *work; /* of the free gains */
+    double *trial_gradient;
+    int *free, *held;
+    int lwork;
+};
+
+struct fg_local *fg_local_new(int q, struct fg_arena *arena)
+{
+    struct fg_local *l = fg_arena_get(arena, sizeof *l);
+    if (!l)
+        return NULL;
+    l->q = q;
+    l->lwork = 40 * q + 64;
+    double **vectors[] = {&l->gradient, &l->step, &l->trial, &l->best, &l->values, &l->rhs, &l->reduced, &l->trial_gradient};
+    for (size_t i = 0; i < sizeof vectors / sizeof *vectors; i++)
+        *vectors[i] = fg_arena_doubles(arena, q);
+    l->hessian = fg_arena_doubles(arena, (size_t)q * q);
+    l->small = fg_arena_doubles(arena, (size_t)q * q);
+    l->vectors = fg_arena_doubles(arena, (size_t)q * q);
+    l->work = fg_arena_doubles(arena, (size_t)l->lwork);
+    l->free = fg_arena_ints(arena, q);
+    l->held = fg_arena_ints(arena, q);
+    return arena->failed ? NULL : l;
+}
+
+/* A gain is held when it sits on a bound and the gradient pushes it outward. */
+static bool pushes_outward(const struct fg_pattern *pattern, const double *theta, const double *gradient, int k)
+{
+    return (theta[k] <= pattern->lower[k] && gradient[k] >= 0) || (theta[k] >= pattern->upper[k] && gradient[k] <= 0);
+}
+
+static double residual_of(const struct fg_local *l, const struct fg_pattern *pattern, const double *theta,
+                          const double *gradient, double J)
+{
+    double worst = 0;
+    for (int k = 0; k < l->q; k++)
+        if (!pushes_outward(pattern, theta, gradient, k))
+            worst = fmax(worst, fabs(gradient[k]) * fmax(1, fabs(theta[k])));
+    return J > 0 ? worst / J : 0;
+}
+
+/* Eigenvectors of the Hessian on the `count` free gains; false when LAPACK fails. */
+static bool decompose(struct fg_local *l, int count)
+{
+    int info = 0;
+    for (int c = 0; c < count; c++)
+        for (int r = 0; r < count; r++)
+            l->vectors[r + (size_t)c * count] = l->hessian[l->free[r] + (size_t)l->free[c] * l->q];
+    if (count == 0)
+        return true;
+    if (!fg_all_finite((size_t)count * count, l->vectors))
+        return false;
+    dsyev_("V", "U", &count, l->vectors, &count, l->values, l->work, &l->lwork, &info, 1, 1);
+    return info == 0;
+}
+
+static double length_at(const struct fg_local *l, int count, double lambda)
+{
+    double sum = 0;
+    for (int i = 0; i < count; i++) {
+        double c = l->rhs[i] / (l->values[i] + lambda);
+        sum += c * c;
+    }
+    return sqrt(sum);
+}
+
+/* Minimiser of reduced's + s'Hs/2 with |s| <= radius on the decomposed gains, into step (by free). */
+static void subproblem(struct fg_local *l, int count, double radius)
+{
+    if (count == 0)
+        return;
+    double size = fmax(fabs(l->values[0]), fabs(l->values[count - 1])), gsize = 0;
+    for (int i = 0; i < count; i++) { /* rhs = -V' reduced */
+        l->rhs[i] = 0;
+        for (int r = 0; r < count; r++)
+            l->rhs[i] -= l->vectors[r + (size_t)i * count] * l->reduced[r];
+        gsize += l->rhs[i] * l->rhs[i];
+    }
+    gsize = sqrt(gsize);
+    double tiny = 1e-14 * size + 1e-300, lowest = l->values[0], lambda = 0, along = 0;
+    if (lowest <= tiny || length_at(l, count, 0) > radius) {
+        double low = fmax(0, -lowest) + tiny, high = low + gsize / radius + tiny;
+        if (length_at(l, count, low) < radius) { /* hard case: the gradient misses the lowest direction */
+            lambda = low;
+            double have = length_at(l, count, low);
+            along = lowest < -tiny ? sqrt(fmax(0, radius * radius - have * have)) : 0;
+        } else {
+            for (int i = 0; i < 80 && high - low > 1e-12 * high; i++) {
+                /* secular equation 1/radius - 1/|s| = 0, bisection safeguards Newton's step */
+                double have = length_at(l, count, lambda = 0.5 * (low + high));
+                if (have > radius)
+                    low = lambda;
+                else
+                    high = lambda;
+                if (fabs(have - radius) < 1e-3 * radius)
+                    break;
+            }
+        }
+    }
+    for (int r = 0; r < count; r++) {
+        double sum = 0;
+        for (int i = 0; i < count; i++)
+            sum += l->vectors[r + (size_t)i * count] * l->rhs[i] / (l->values[i] + lambda);
+        l->step[l->free[r]] = sum + along * l->vectors[r] * (l->rhs[0] < 0 ? -1 : 1);
+    }
+}
+
+/* Step inside the bounds: gains that would leave are put on their bound and the rest is solved again. */
+static bool find_step(struct fg_local *l, const struct fg_pattern *pattern, const double *theta, double radius,
+                      bool decomposed)
+{
+    int q = l->q;
+    memset(l->step, 0, (size_t)q * sizeof(double));
+    for (int k = 0; k < q; k++)
+        l->held[k] = pushes_outward(pattern, theta, l->gradient, k);
+    for (int round = 0; round <= q; round++) {
+        int count = 0;
+        for (int k = 0; k < q; k++)
+            if (!l->held[k])
+                l->free[count++] = k;
+        if (!(round == 0 && decomposed) && !decompose(l, count))
+            return false;
+        for (int r = 0; r < count; r++) {
+            l->reduced[r] = l->gradient[l->free[r]];
+            for (int k = 0; k < q; k++)
+                if (l->held[k])
+                    l->reduced[r] += l->hessian[l->free[r] + (size_t)k * q] * l->step[k];
+        }
+        subproblem(l, count, radius);
+        bool changed = false;
+        for (int r = 0; r < count; r++) {
+            int k = l->free[r];
+            double target = theta[k] + l->step[k];
+            if (target < pattern->lower[k] || target > pattern->upper[k]) {
+                l->step[k] = (target < pattern->lower[k] ? pattern->lower[k] : pattern->upper[k]) - theta[k];
+                l->held[k] = 1;
+                changed = true;
+            }
+        }
+        if (!changed)
+            return true;
+    }
+    return true;
+}
+
+static double predicted(const struct fg_local *l)
+{
+    double sum = 0;
+    for (int k = 0; k < l->q; k++) {
+        double Hs = 0;
+        for (int j = 0; j < l->q; j++)
+            Hs += l->hessian[k + (size_t)j * l->q] * l->step[j];
+        sum += l->step[k] * (l->gradient[k] + 0.5 * Hs);
+    }
+    return -sum;
+}
+
+static double norm(int count, const double *x)
+{
+    double sum = 0;
+    for (int i = 0; i < count; i++)
+        sum += x[i] * x[i];
+    return sqrt(sum);
+}
+
+/* Free gains, curvature at theta; returns the number of gains held at a bound, -1 on failure. */
+static int curvature(struct fg_local *l, const struct fg_pattern *pattern, const double *theta,
+                     struct fg_local_answer *answer)
+{
+    int count = 0;
+    for (int k = 0; k < l->q; k++)
+        if (!pushes_outward(pattern, theta, l->gradient, k))
+            l->free[count++] = k;
+    if (!decompose(l, count))
+        return -1;
+    answer->smallest = count && answer->J > 0 ? l->values[0] / answer->J : 0;
+    answer->largest = count && answer->J > 0 ? fmax(fabs(l->values[0]), fabs(l->values[count - 1])) / answer->J : 0;
+    return l->q - count;
+}
+
+struct fg_local_answer fg_local_minimise(struct fg_local *l, struct fg_cost *cost, const struct fg_pattern *pattern,
+                                         double *theta, const struct fg_local_limits *limits)
+{
+    int q = l->q;
+    struct fg_local_answer answer = {.end = FG_LOCAL_STOPPED, .J = fg_cost_at(cost, theta), .evaluations = 1};
+    if (!isfinite(answer.J)) {
+        answer.end = FG_LOCAL_STALLED;
+        return answer;
+    }
+    double radius = fmax(1, norm(q, theta));
+    double blocked = INFINITY; /* length of the last step that left the stable set */
+    bool fresh = true;
+    for (int iteration = 0;; iteration++) {
+        if (fresh) {
+            fg_cost_gradient(cost, l->gradient);
+            fg_cost_hessian(cost, l->hessian);
+            answer.hessians++;
+            answer.residual = residual_of(l, pattern, theta, l->gradient, answer.J);
+            answer.at_bound = curvature(l, pattern, theta, &answer);
+            if (answer.at_bound < 0) {
+                answer.end = FG_LOCAL_STALLED;
+                return answer;
+            }
+            if (answer.residual <= TOLERANCE && answer.smallest >= -ACCEPTABLE) {
+                answer.end = FG_LOCAL_MINIMUM;
+                return answer;
+            }
+            double farthest = 0, outward = 0;
+            for (int k = 0; k < q; k++) {
+                farthest = fmax(farthest, fabs(theta[k]));
+                outward -= theta[k] * l->gradient[k];
+            }
+            if (farthest > LIMIT && outward > 0) {
+                answer.end = FG_LOCAL_UNBOUNDED;
+                return answer;
+            }
+        }
+        if (iteration >= limits->iterations || (limits->stop && limits->stop(limits->user)))
+            return answer;
+        if (!find_step(l, pattern, theta, radius, fresh)) {
+            answer.end = FG_LOCAL_STALLED;
+            return answer;
+        }
+        fresh = false;
+        double expected = predicted(l), size = norm(q, l->step);
+        if (!(size > TINY_RADIUS * fmax(1, norm(q, theta))) || !(expected > 0)) {
+            answer.end = answer.residual <= ACCEPTABLE                         ? FG_LOCAL_MINIMUM
+                         : blocked <= ACCEPTABLE * fmax(1, norm(q, theta)) ? FG_LOCAL_BOUNDARY
+                                                                               : FG_LOCAL_STALLED;
+            return answer;
+        }
+        for (int k = 0; k < q; k++)
+            l->trial[k] = fmin(fmax(theta[k] + l->step[k], pattern->lower[k]), pattern->upper[k]);
+        double J = fg_cost_at(cost, l->trial);
+        answer.evaluations++;
+        double gain = answer.J - J, ratio = isfinite(J) ? gain / expected : -1;
+        bool accept = ratio > 1e-4;
+        if (isfinite(J) && expected < NOISE * answer.J) {
+            /* J cannot judge any more: the gradient does */
+            fg_cost_gradient(cost, l->trial_gradient);
+            double residual = residual_of(l, pattern, l->trial, l->trial_gradient, J);
+            accept = residual < 0.5 * answer.residual && fabs(gain) <= 10 * NOISE * answer.J;
+            if (!accept) {
+                fg_cost_at(cost, theta);
+                answer.end = answer.residual <= ACCEPTABLE ? FG_LOCAL_MINIMUM : FG_LOCAL_STALLED;
+                return answer;
+            }
+            ratio = 1;
+        }
+        if (!isfinite(J))
+            blocked = size;
+        if (accept) {
+            memcpy(theta, l->trial, (size_t)q * sizeof(double));
+            answer.J = J;
+            fresh = true;
+        }
+        if (ratio < 0.25)
+            radius = 0.25 * size;
+        else if (ratio > 0.75 && size > 0.9 * radius)
+            radius *= 3;
+    }
+}
