@@ -7,15 +7,15 @@
 
 struct fg_pole {
     double re, im;
-    double damping;  /* -re/|s| of the (equivalent) continuous pole, NAN for a pole at the origin */
-    double speed;    /* |pole| (rad per time unit) continuous, modulus |z| discrete */
+    double damping;     /* -re/|s| of the (equivalent) continuous pole, NAN for a pole at the origin */
+    double speed;       /* |pole| (rad per time unit) continuous, modulus |z| discrete */
     const char *states; /* names of the states that take part most, "" when not computed */
 };
 
 struct fg_rung {
-    const char *key;    /* "none" "today" "rounded" "tuned" "judged" "unstructured" "lqg" "lqr" */
-    const char *label;  /* "no control" ... in words */
-    double cost;        /* NAN: does not exist (unstable) */
+    const char *key;   /* "none" "today" "rounded" "tuned" "judged" "unstructured" "lqg" "lqr" */
+    const char *label; /* "no control" ... in words */
+    double cost;       /* NAN: does not exist (unstable) */
     double above_lqg_percent;
     double price_percent; /* what the step to the next rung down costs: 100 (J - J_next) / J_next */
     const char *price;    /* "price of staying static" ..., "" */
@@ -24,12 +24,12 @@ struct fg_rung {
 
 struct fg_loop_margin { /* the loop broken at one input, all the others closed */
     int input;
-    double gain_down;     /* factor in (0,1): the loop gain may fall to this; 0 = to zero */
-    double gain_up;       /* factor > 1; INFINITY = no limit */
-    double phase_deg;     /* INFINITY = no crossing */
+    double gain_down; /* factor in (0,1): the loop gain may fall to this; 0 = to zero */
+    double gain_up;   /* factor > 1; INFINITY = no limit */
+    double phase_deg; /* INFINITY = no crossing */
     double phase_frequency;
     double gain_up_frequency, gain_down_frequency; /* rad per time unit (discrete: rad per step), NAN none */
-    double peak_sensitivity; /* max |1/(1+L)| of this loop */
+    double peak_sensitivity;                       /* max |1/(1+L)| of this loop */
     double peak_frequency;
 };
 
@@ -38,7 +38,7 @@ struct fg_hidden_mode {
     bool uncontrollable, unobservable; /* no input moves it / no output shows it */
     bool unweighted, undisturbed;      /* J does not see it / no disturbance reaches it */
     bool unstable;
-    const char *states;                /* names of the states that take part most */
+    const char *states; /* names of the states that take part most */
 };
 
 struct fg_minimum {
@@ -53,10 +53,10 @@ struct fg_finding_warning {
 };
 
 enum fg_verdict {
-    FG_VERDICT_NONE,      /* no accept stated, or no gain */
-    FG_VERDICT_ACCEPTED,  /* gap within accept: static is good enough, proved */
-    FG_VERDICT_REFUSED,   /* gap above accept and LQG is attained */
-    FG_VERDICT_CANNOT_TELL/* gap above accept but the bound is only a limit */
+    FG_VERDICT_NONE,       /* no accept stated, or no gain */
+    FG_VERDICT_ACCEPTED,   /* gap within accept: static is good enough, proved */
+    FG_VERDICT_REFUSED,    /* gap above accept and LQG is attained */
+    FG_VERDICT_CANNOT_TELL /* gap above accept but the bound is only a limit */
 };
 
 struct fg_findings {
@@ -64,13 +64,13 @@ struct fg_findings {
     const struct flatgain_problem *problem;
     flatgain_outcome outcome;
     int exit_status;
-    const char *summary;      /* one or two sentences: what came out and what to do */
-    bool complete;            /* false: interrupted */
+    const char *summary; /* one or two sentences: what came out and what to do */
+    bool complete;       /* false: interrupted */
 
     bool has_gain;
-    bool stable;              /* of the loop with K */
-    double *K;                /* m x p column-major */
-    double *K_rows;           /* the same row-major for the public header */
+    bool stable;    /* of the loop with K */
+    double *K;      /* m x p column-major */
+    double *K_rows; /* the same row-major for the public header */
 
     double cost, cost_none, cost_today, cost_lqg, cost_lqr;
     bool lqg_attained, lqr_attained; /* meaningful when the cost exists */
@@ -82,20 +82,20 @@ struct fg_findings {
     int rungs;
     struct fg_rung *ladder;
 
-    int order;                /* number of poles: states with the sensor lags */
-    struct fg_pole *poles;    /* closed loop with K; NULL without gain */
+    int order;             /* number of poles: states with the sensor lags */
+    struct fg_pole *poles; /* closed loop with K; NULL without gain */
     struct fg_pole *open_poles;
-    double radius;            /* discrete: spectral radius closed loop, else NAN */
-    double abscissa;          /* continuous: largest real part closed loop, else NAN */
+    double radius;   /* discrete: spectral radius closed loop, else NAN */
+    double abscissa; /* continuous: largest real part closed loop, else NAN */
 
-    int margins;              /* m, or 0 when not computed */
+    int margins; /* m, or 0 when not computed */
     struct fg_loop_margin *margin;
-    double peak_sensitivity;  /* max sigma of (I + K G)^-1 at the inputs, all loops; NAN none */
+    double peak_sensitivity; /* max sigma of (I + K G)^-1 at the inputs, all loops; NAN none */
     double peak_frequency;
 
     int hidden;
     struct fg_hidden_mode *hidden_modes;
-    double condition;         /* of the scaled open-loop A eigenvector basis; NAN not computed */
+    double condition; /* of the scaled open-loop A eigenvector basis; NAN not computed */
 
     struct {
         int starts, stabilised, distinct;
@@ -106,14 +106,17 @@ struct fg_findings {
         int at_bound;              /* gains sitting on a bound */
         bool rule_satisfied;       /* stopping rule met (false: ran out of starts) */
         double expected_minima;    /* Boender, Rinnooy Kan estimate of the number of minima */
+        double least_unstable;     /* not found: largest real part (radius) of the closest loop, else NAN */
         double seconds;            /* wall clock; written only with timing */
         uint64_t seed;
     } search;
 
-    struct { /* outcome "impossible" */
-        const char *kind;  /* "fixed-mode" ...; NULL when none */
+    struct {              /* outcome "impossible" */
+        const char *kind; /* "fixed-mode" ...; NULL when none */
         const char *text;
-        double re, im;     /* the mode, where the kind has one */
+        double re, im;      /* "fixed-mode": the mode that no gain moves, im >= 0; else NAN */
+        const char *states; /* "fixed-mode": names of the states in it; else "" */
+        double sum;         /* "pole-sum": the sum of the closed-loop poles; else NAN */
     } proof;
 
     struct fg_finding_warning *warnings; /* problem warnings first */

@@ -1,0 +1,289 @@
+#include "assess/assembly.h"
+
+#include <math.h>
+#include <string.h>
+
+/* Common practice for a single loop: a phase margin of 30 degrees or more, room for twice the gain, and a
+ * peak sensitivity of at most 2 (Astrom and Hagglund, Advanced PID Control, give 1.2 to 2.0). */
+static const double LEAST_PHASE_DEG = 30;
+static const double LEAST_GAIN_UP = 2;
+static const double MOST_SENSITIVITY = 2;
+
+/* A closed-loop mode that decays slower than this part of the fastest pole, and that the weights do not see
+ * or no disturbance reaches, was left alone by the optimisation: the user should know. */
+static const double SLOW_PART = 1e-3;
+
+/* How many modes or gains one warning names. */
+enum { MOST_NAMED = 3 };
+
+static const char *or_empty(const char *text)
+{
+    return text ? text : "";
+}
+
+static double decay_of(const struct fg_assembly *a, const struct fg_mode *mode)
+{
+    return a->model.law.discrete ? 1 - hypot(mode->re, mode->im) : -mode->re;
+}
+
+/* "-0.1 (a), -0.2 (b) and 4 more": the modes for which the flags agree with `wanted`. */
+static const char *list_modes(struct fg_assembly *a, const struct fg_modes *modes, const bool *wanted)
+{
+    const char *text = "";
+    int total = 0, said = 0;
+    for (int i = 0; i < modes->count; i++)
+        total += wanted[i];
+    for (int i = 0; i < modes->count && said < MOST_NAMED; i++)
+        if (wanted[i]) {
+            const struct fg_mode *mode = &modes->mode[i];
+            text = or_empty(fg_arena_text(a->arena, "%s%s%s", text, said++ ? ", " : "",
+                                          fg_words_mode(a->arena, mode->re, mode->im, mode->states)));
+        }
+    if (total > said)
+        text = or_empty(fg_arena_text(a->arena, "%s and %d more", text, total - said));
+    return text;
+}
+
+static void warn_hidden(struct fg_assembly *a)
+{
+    const struct fg_modes *modes = &a->open;
+    bool *stuck = fg_arena_get(a->arena, (size_t)modes->count + 1);
+    bool *blind = fg_arena_get(a->arena, (size_t)modes->count + 1);
+    if (!stuck || !blind)
+        return;
+    bool any_stuck = false, any_blind = false;
+    for (int i = 0; i < modes->count; i++) {
+        stuck[i] = modes->mode[i].uncontrollable;
+        blind[i] = modes->mode[i].unobservable && !stuck[i];
+        any_stuck = any_stuck || stuck[i];
+        any_blind = any_blind || blind[i];
+    }
+    if (any_stuck)
+        fg_warn(a->findings, "hidden-mode",
+                fg_arena_text(a->arena,
+                              "No input moves the mode %s: no gain changes it. If it should be "
+                              "controlled, check B or add an actuator.",
+                              list_modes(a, modes, stuck)));
+    if (any_blind)
+        fg_warn(a->findings, "hidden-mode",
+                fg_arena_text(a->arena,
+                              "No output shows the mode %s: no law on these measurements changes "
+                              "it. If it should be controlled, check C or add a sensor.",
+                              list_modes(a, modes, blind)));
+}
+
+/* Slow closed-loop modes that J does not see or no disturbance reaches. */
+static void warn_unseen(struct fg_assembly *a)
+{
+    const struct fg_modes *modes = &a->closed;
+    if (!a->findings->has_gain || !a->findings->stable)
+        return;
+    double fastest = 0;
+    for (int i = 0; i < modes->count; i++)
+        fastest = fmax(fastest, hypot(modes->mode[i].re, modes->mode[i].im));
+    bool *unweighted = fg_arena_get(a->arena, (size_t)modes->count + 1);
+    bool *undisturbed = fg_arena_get(a->arena, (size_t)modes->count + 1);
+    if (!unweighted || !undisturbed)
+        return;
+    bool any_unweighted = false, any_undisturbed = false;
+    for (int i = 0; i < modes->count; i++) {
+        const struct fg_mode *mode = &modes->mode[i];
+        bool slow = decay_of(a, mode) < SLOW_PART * (a->model.law.discrete ? 1 : fastest);
+        unweighted[i] = slow && mode->unweighted;
+        undisturbed[i] = slow && mode->undisturbed && !mode->unweighted;
+        any_unweighted = any_unweighted || unweighted[i];
+        any_undisturbed = any_undisturbed || undisturbed[i];
+    }
+    if (any_unweighted)
+        fg_warn(a->findings, "unweighted-mode",
+                fg_arena_text(a->arena,
+                              "The weights do not see the slow mode %s, so nothing keeps it away "
+                              "from instability. Give its states a weight in Q.",
+                              list_modes(a, modes, unweighted)));
+    if (any_undisturbed)
+        fg_warn(a->findings, "undisturbed-mode",
+                fg_arena_text(a->arena,
+                              "No disturbance reaches the slow mode %s, so the cost does not care "
+                              "how slow it is. Let a disturbance reach its states.",
+                              list_modes(a, modes, undisturbed)));
+}
+
+static void warn_boundary(struct fg_assembly *a)
+{
+    if (a->findings->outcome != FLATGAIN_BOUNDARY || a->closed.count == 0)
+        return;
+    const struct fg_mode *mode = &a->closed.mode[0];
+    const char *name = fg_words_mode(a->arena, mode->re, mode->im, mode->states);
+    const char *who = mode->states[0] ? mode->states : "its states";
+    const char *cure =
+        mode->unweighted && !mode->undisturbed
+            ? fg_arena_text(a->arena, "The weights do not see it: give %s a weight in Q.", who)
+        : mode->undisturbed && !mode->unweighted
+            ? fg_arena_text(a->arena, "No disturbance reaches it: let one reach %s, even a small one.", who)
+            : fg_arena_text(a->arena, "Give %s a weight in Q and a disturbance, even small ones.", who);
+    fg_warn(a->findings, "boundary",
+            fg_arena_text(a->arena, "The cost falls as the mode %s drifts to the boundary of stability. %s",
+                          name, or_empty(cure)));
+}
+
+bool fg_pattern_kept(const struct fg_assembly *a, const double *K, const char **text)
+{
+    const struct flatgain_problem *problem = a->problem;
+    const struct fg_pattern *pattern = &problem->pattern;
+    struct fg_arena *arena = a->arena;
+    double *theta = fg_arena_doubles(arena, (size_t)pattern->count + 1);
+    double *nearest = fg_arena_doubles(arena, (size_t)pattern->m * (size_t)pattern->p);
+    *text = "";
+    if (!theta || !nearest)
+        return true;
+    /* the nearest gain that keeps the pattern is the gain itself exactly when it keeps it */
+    fg_pattern_parameters(pattern, K, theta);
+    fg_pattern_gain(pattern, theta, nearest);
+    for (int i = 0; i < pattern->m; i++)
+        for (int j = 0; j < pattern->p; j++) {
+            double is = K[i + j * pattern->m], should = nearest[i + j * pattern->m];
+            if (fabs(is - should) <= 1e-9 * fmax(fabs(is), fabs(should)))
+                continue;
+            *text = or_empty(fg_arena_text(
+                arena,
+                "The judged gain does not keep the problem's pattern or bounds: %s from %s is %s, the "
+                "nearest allowed value is %s.",
+                problem->inputs[i].name, problem->outputs[j].name, fg_words_number(arena, is, 6),
+                fg_words_number(arena, should, 6)));
+            return false;
+        }
+    return true;
+}
+
+static void warn_bounds(struct fg_assembly *a)
+{
+    const struct fg_pattern *pattern = &a->problem->pattern;
+    const struct fg_findings *f = a->findings;
+    if (!f->has_gain || f->search.at_bound <= 0)
+        return;
+    const char *text = "";
+    int said = 0, total = 0;
+    for (int i = 0; i < pattern->m; i++)
+        for (int j = 0; j < pattern->p; j++) {
+            int entry = i + j * pattern->m, index = pattern->index[entry];
+            if (index < 0)
+                continue;
+            double theta = f->K[entry] * pattern->sign[entry];
+            double lower = pattern->lower[index], upper = pattern->upper[index];
+            double room = 1e-9 * fabs(theta);
+            if (theta > lower + room && theta < upper - room)
+                continue;
+            if (++total > MOST_NAMED)
+                continue;
+            text = or_empty(fg_arena_text(a->arena, "%s%s%s from %s = %s", text, said++ ? ", " : "",
+                                          a->problem->inputs[i].name, a->problem->outputs[j].name,
+                                          fg_words_number(a->arena, f->K[entry], 6)));
+        }
+    if (total == 0)
+        return;
+    if (total > said)
+        text = or_empty(fg_arena_text(a->arena, "%s and %d more", text, total - said));
+    fg_warn(
+        a->findings, "gain-at-bound",
+        fg_arena_text(a->arena,
+                      "%s on a bound: %s. The bound costs something; the ladder says how much. Widen it if "
+                      "the actuator allows.",
+                      total == 1 ? "A gain sits" : "Gains sit", text));
+}
+
+static void warn_margins(struct fg_assembly *a)
+{
+    const struct fg_findings *f = a->findings;
+    for (int i = 0; i < f->margins; i++) {
+        const struct fg_loop_margin *loop = &f->margin[i];
+        const char *input = a->problem->inputs[loop->input].name;
+        if (loop->phase_deg < LEAST_PHASE_DEG)
+            fg_warn(a->findings, "phase-margin",
+                    fg_arena_text(a->arena,
+                                  "The loop at %s has a phase margin of only %s degrees (common "
+                                  "practice: %g or more). Delays that the model leaves out may make "
+                                  "it unstable; weigh this input more in R.",
+                                  input, fg_words_number(a->arena, loop->phase_deg, 3), LEAST_PHASE_DEG));
+        if (loop->gain_up < LEAST_GAIN_UP)
+            fg_warn(a->findings, "gain-margin",
+                    fg_arena_text(a->arena,
+                                  "The loop at %s becomes unstable when its gain grows by a factor "
+                                  "%s (common practice: %g or more); weigh this input more in R.",
+                                  input, fg_words_number(a->arena, loop->gain_up, 3), LEAST_GAIN_UP));
+        /* a low margin in phase or gain says the same in words that more people know */
+        else if (loop->peak_sensitivity > MOST_SENSITIVITY && !(loop->phase_deg < LEAST_PHASE_DEG))
+            fg_warn(a->findings, "peak-sensitivity",
+                    fg_arena_text(a->arena,
+                                  "The loop at %s has a peak sensitivity of %s (common practice: at "
+                                  "most %g): it is touchy about errors of the model near %s.",
+                                  input, fg_words_number(a->arena, loop->peak_sensitivity, 3),
+                                  MOST_SENSITIVITY, fg_words_number(a->arena, loop->peak_frequency, 3)));
+    }
+}
+
+static void warn_search(struct fg_assembly *a)
+{
+    const struct fg_findings *f = a->findings;
+    const struct fg_search_answer *s = &a->answer;
+    bool finished = f->outcome == FLATGAIN_TUNED;
+    if (finished && s->end == FG_SEARCH_STALLED)
+        fg_warn(a->findings, "search-stalled",
+                fg_arena_text(a->arena,
+                              "The best start did not converge (residual %s). Raise --starts, or "
+                              "check the scaling of weights and units.",
+                              fg_words_number(a->arena, s->residual, 3)));
+    if (finished && s->end == FG_SEARCH_FLAT)
+        fg_warn(a->findings, "flat-cost",
+                "The cost does not depend on the gain: the outputs, inputs, weights and disturbances do not "
+                "meet in any mode. Check C, Q and the disturbance.");
+    else if (finished && !s->rule_satisfied)
+        fg_warn(a->findings, "starts-exhausted",
+                fg_arena_text(a->arena,
+                              "The search ran out of starts before its stopping rule was met (%d "
+                              "distinct minima seen, about %s expected): a better gain may exist. "
+                              "Raise --starts.",
+                              s->distinct, fg_words_number(a->arena, s->expected_minima, 3)));
+}
+
+static void warn_disturbance(struct fg_assembly *a)
+{
+    if (!fg_matrix_is_zero(a->problem->W))
+        return;
+    fg_warn(a->findings, "no-disturbance",
+            a->problem->reading == FG_START
+                ? "The start X0 is zero, so the cost is zero for every stabilising gain. State X0."
+                : "There is no disturbance, so the cost asks for nothing but quiet actuators. State the "
+                  "disturbance (disturbance: G or W).");
+}
+
+static void warn_comparisons(struct fg_assembly *a)
+{
+    struct fg_findings *f = a->findings;
+    if (a->problem->has_today && f->cost_today > f->cost_none)
+        fg_warn(f, "today-worse-than-none",
+                "By this cost the gain in use today is worse than no control at all. Check its sign "
+                "convention (u = u0 - K (y - y0)) and the weights.");
+    if (f->outcome == FLATGAIN_JUDGED && f->cost > f->cost_none)
+        fg_warn(f, "worse-than-none",
+                "By this cost the judged gain is worse than no control at all. Check its sign convention "
+                "(u = u0 - K (y - y0)) and the weights.");
+    const char *where;
+    if (f->outcome == FLATGAIN_JUDGED && !fg_pattern_kept(a, f->K, &where))
+        fg_warn(f, "pattern-not-kept", where);
+    if (isnan(f->cost_lqg) && f->outcome != FLATGAIN_IMPOSSIBLE)
+        fg_warn(f, "no-benchmark",
+                fg_arena_text(a->arena, "There is no LQG benchmark, so the gap is unknown: %s.",
+                              f->lqg_why ? f->lqg_why : "it could not be computed"));
+}
+
+void fg_warnings_fill(struct fg_assembly *a)
+{
+    warn_boundary(a);
+    warn_search(a);
+    warn_bounds(a);
+    warn_margins(a);
+    warn_comparisons(a);
+    warn_unseen(a);
+    warn_hidden(a);
+    warn_disturbance(a);
+}
