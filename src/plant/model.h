@@ -16,9 +16,9 @@ struct fg_plant {
 };
 
 struct fg_model {
-    struct fg_plant law;        /* what the static law sees; V is zero in the continuous setting */
-    struct fg_plant benchmark;  /* what LQG and LQR see: no sensor lags, V as given */
-    const char **state_names;   /* law.n names, the lag states last */
+    struct fg_plant law;       /* what the static law sees; V is zero in the continuous setting */
+    struct fg_plant benchmark; /* what LQG and LQR see: no sensor lags, V as given */
+    const char **state_names;  /* law.n names, the lag states last */
 };
 
 /* Fills *model from the problem; memory from the arena. */
