@@ -178,6 +178,12 @@ static bool every_entry_free(const struct fg_pattern *pattern)
     return pattern->count == pattern->m * pattern->p;
 }
 
+/* One entry per complex pair. */
+static bool listed(const struct fg_spectrum *spectrum, int k)
+{
+    return spectrum->im[k] >= 0 || fg_spectrum_is_real(spectrum, k);
+}
+
 static bool near(double re, double im, double error, const struct fg_fixed_mode *mode)
 {
     double apart = hypot(re - mode->re, im - mode->im);
@@ -197,20 +203,20 @@ static int keep_unmoved(struct work *work, const struct fg_spectrum *spectrum, b
         if (!first) {
             int best = -1;
             for (int j = 0; j < spectrum->n; j++)
-                if (!used[j] && spectrum->im[j] >= 0 &&
+                if (!used[j] && listed(spectrum, j) &&
                     near(spectrum->re[j], spectrum->im[j], fg_spectrum_error(spectrum, j), &mode[c]) &&
                     (best < 0 || hypot(spectrum->re[j] - mode[c].re, spectrum->im[j] - mode[c].im) <
                                      hypot(spectrum->re[best] - mode[c].re, spectrum->im[best] - mode[c].im)))
                     best = j;
             k = best;
         }
-        if (k < 0 || spectrum->im[k] < 0 || moves(work, spectrum, k, sum, size))
+        if (k < 0 || !listed(spectrum, k) || moves(work, spectrum, k, sum, size))
             continue;
         used[k] = true;
         struct fg_fixed_mode now = mode[c < count ? c : 0];
         if (first || fg_spectrum_error(spectrum, k) < now.error) {
             now.re = spectrum->re[k];
-            now.im = spectrum->im[k];
+            now.im = fg_spectrum_is_real(spectrum, k) ? 0 : spectrum->im[k];
             now.error = fg_spectrum_error(spectrum, k);
             fg_spectrum_states(spectrum, k, names, sizeof now.states, now.states);
         }

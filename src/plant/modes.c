@@ -26,8 +26,8 @@ static const double HIDDEN_SQUARED = 1e-12;
 /* Rounding leaves entries of w that should be 0 at 1e-16; the natural size of W'b is not taken below this
  * part of |b| (of sqrt(max diagonal) for covariances), or noise would be compared with noise. */
 static const double FLOOR = 1e-4, FLOOR_SQUARED = 1e-6;
-/* Eigenvalues of one multiple eigenvalue: not further apart than their rounding errors, and never more
- * than this part of |A|. */
+/* Eigenvalues of one multiple eigenvalue: not further apart than the rounding error of each (the smaller
+ * one, or a Jordan block would swallow simple neighbours), and never more than this part of |A|. */
 static const double WIDEST_CLUSTER = 1e-4;
 /* Null spaces of repeated eigenvalues need a singular value decomposition each; past order 100 only this
  * many are done, the others use the eigenvectors alone. */
@@ -146,7 +146,7 @@ static int find_cluster(const struct fg_spectrum *spectrum, int k, int *member, 
         for (int j = 0; j < n; j++) {
             int i = member[next];
             double apart = hypot(spectrum->re[i] - spectrum->re[j], spectrum->im[i] - spectrum->im[j]);
-            double error = fg_spectrum_error(spectrum, i) + fg_spectrum_error(spectrum, j);
+            double error = fmin(fg_spectrum_error(spectrum, i), fg_spectrum_error(spectrum, j));
             if (!in[j] && apart <= 10 * error && apart <= WIDEST_CLUSTER * spectrum->norm) {
                 in[j] = true;
                 member[count++] = j;
@@ -208,7 +208,7 @@ static int sort_modes(bool discrete, const struct fg_spectrum *spectrum, int *or
 {
     int count = 0;
     for (int k = 0; k < spectrum->n; k++) {
-        if (spectrum->im[k] < 0)
+        if (spectrum->im[k] < 0 && !fg_spectrum_is_real(spectrum, k))
             continue;
         double key = slowness(discrete, spectrum, k);
         int at = count++;
@@ -293,7 +293,7 @@ flatgain_status fg_modes(const struct fg_plant *plant, struct fg_matrix A, const
     int count = status == FLATGAIN_OK ? sort_modes(plant->discrete, spectrum, order) : 0;
     for (int k = 0; k < count; k++) {
         mode[k].re = spectrum->re[order[k]];
-        mode[k].im = spectrum->im[order[k]];
+        mode[k].im = fg_spectrum_is_real(spectrum, order[k]) ? 0 : spectrum->im[order[k]];
         fg_spectrum_states(spectrum, order[k], state_names, sizeof mode[k].states, mode[k].states);
     }
     for (int k = 0; k < count; k++) {

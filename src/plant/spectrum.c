@@ -7,9 +7,10 @@
 
 #include "linalg/lapack.h"
 
-/* An entry below this part of both the largest of its row and of its column is rounding noise of a
- * computed matrix; it must not pull at the units. */
-static const double NOISE_ENTRY = 1e-14;
+/* A direct coupling below this part of a coupling through one state between, |a_ik||a_kj| / rate, is
+ * rounding noise of a computed matrix and must not pull at the units. The comparison itself does not
+ * depend on units. */
+static const double NOISE_ENTRY = 1e-12;
 /* Ties the scales of unconnected parts to 1; small against one connection. */
 static const double TIE = 1e-8;
 
@@ -21,32 +22,49 @@ struct fit {
     double *laplacian, *rhs;
 };
 
-static void add_entries(struct fit *fit, struct fg_matrix a, int row0, int col0, bool square, double target,
-                        double *row_max, double *col_max)
+/* max over the states k between of |left_ik||right_kj|; k = i (k = j) is no state between when not_i. */
+static double indirect(struct fg_matrix left, struct fg_matrix right, int i, int j, bool not_i, bool not_j)
 {
-    for (int i = 0; i < a.rows; i++)
-        row_max[i] = 0;
-    for (int j = 0; j < a.cols; j++) {
-        col_max[j] = 0;
-        for (int i = 0; i < a.rows; i++) {
-            double size = square && i == j ? 0 : fabs(FG_AT(a, i, j));
-            row_max[i] = fmax(row_max[i], size);
-            col_max[j] = fmax(col_max[j], size);
+    double largest = 0;
+    for (int k = 0; k < left.cols; k++)
+        if (!(not_i && k == i) && !(not_j && k == j))
+            largest = fmax(largest, fabs(FG_AT(left, i, k) * FG_AT(right, k, j)));
+    return largest;
+}
+
+static void add_entry(struct fit *fit, double size, double target, int row, int col)
+{
+    size_t r = (size_t)row, c = (size_t)col, n = (size_t)fit->size;
+    double b = log(size) - target;
+    fit->laplacian[r + r * n] += 1;
+    fit->laplacian[c + c * n] += 1;
+    fit->laplacian[r + c * n] -= 1;
+    fit->laplacian[c + r * n] -= 1;
+    fit->rhs[c] -= b;
+    fit->rhs[r] += b;
+}
+
+static void add_entries(struct fit *fit, const struct fg_plant *plant, struct fg_matrix A, double rate)
+{
+    int n = plant->n, m = plant->m, p = plant->p;
+    double noise = NOISE_ENTRY / exp(rate);
+    for (int j = 0; j < n; j++)
+        for (int i = 0; i < n; i++) {
+            double size = fabs(FG_AT(A, i, j));
+            if (i != j && size > noise * indirect(A, A, i, j, true, true))
+                add_entry(fit, size, rate, i, j);
         }
-    }
-    for (int j = 0; j < a.cols; j++)
-        for (int i = 0; i < a.rows; i++) {
-            double size = fabs(FG_AT(a, i, j));
-            if ((square && i == j) || size == 0 || size < NOISE_ENTRY * fmin(row_max[i], col_max[j]))
-                continue;
-            size_t r = (size_t)(row0 + i), c = (size_t)(col0 + j), n = (size_t)fit->size;
-            double b = log(size) - target;
-            fit->laplacian[r + r * n] += 1;
-            fit->laplacian[c + c * n] += 1;
-            fit->laplacian[r + c * n] -= 1;
-            fit->laplacian[c + r * n] -= 1;
-            fit->rhs[c] -= b;
-            fit->rhs[r] += b;
+    for (int j = 0; j < m; j++)
+        for (int i = 0; i < n; i++) {
+            double size = fabs(FG_AT(plant->B, i, j));
+            if (size > noise * indirect(A, plant->B, i, j, true, false))
+                add_entry(fit, size, 0, i, n + j);
+        }
+    for (int j = 0; j < n; j++)
+        for (int i = 0; i < p; i++) {
+            double size = fabs(FG_AT(plant->C, i, j));
+            if (size > noise * indirect(plant->C, A, i, j, false, true))
+                add_entry(fit, size, 0, n + m + i, j);
         }
 }
 
@@ -84,8 +102,6 @@ bool fg_units_find(const struct fg_plant *plant, struct fg_matrix A, struct fg_a
     struct fit fit = {.size = size,
                       .laplacian = fg_arena_doubles(&scratch, (size_t)size * (size_t)size),
                       .rhs = fg_arena_doubles(&scratch, (size_t)size)};
-    double *row_max = fg_arena_doubles(&scratch, (size_t)size);
-    double *col_max = fg_arena_doubles(&scratch, (size_t)size);
     double *scale = fg_arena_doubles(arena, (size_t)size);
     bool finite = fg_all_finite((size_t)n * (size_t)n, A.at) &&
                   fg_all_finite((size_t)n * (size_t)m, plant->B.at) &&
@@ -98,9 +114,7 @@ bool fg_units_find(const struct fg_plant *plant, struct fg_matrix A, struct fg_a
         *units = (struct fg_units){scale, scale + n, scale + n + m};
     }
     if (enough && finite) {
-        add_entries(&fit, A, 0, 0, true, rate, row_max, col_max);
-        add_entries(&fit, plant->B, 0, n, false, 0, row_max, col_max);
-        add_entries(&fit, plant->C, n + m, 0, false, 0, row_max, col_max);
+        add_entries(&fit, plant, A, rate);
         for (int k = 0; k < size; k++)
             fit.laplacian[(size_t)k * (size_t)(size + 1)] += TIE;
         dpotrf_("L", &size, fit.laplacian, &size, &info, 1);
@@ -194,6 +208,11 @@ flatgain_status fg_spectrum_compute(struct fg_matrix A, struct fg_arena *arena, 
 double fg_spectrum_error(const struct fg_spectrum *spectrum, int k)
 {
     return 10 * DBL_EPSILON * spectrum->norm * spectrum->condition[k];
+}
+
+bool fg_spectrum_is_real(const struct fg_spectrum *spectrum, int k)
+{
+    return fabs(spectrum->im[k]) <= fg_spectrum_error(spectrum, k);
 }
 
 void fg_spectrum_states(const struct fg_spectrum *spectrum, int k, const char *const *names, size_t size,

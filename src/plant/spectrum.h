@@ -36,6 +36,9 @@ flatgain_status fg_spectrum_compute(struct fg_matrix A, struct fg_arena *arena, 
 /* Bound on the rounding error of eigenvalue k. */
 double fg_spectrum_error(const struct fg_spectrum *spectrum, int k);
 
+/* Real, or a real double eigenvalue that rounding made a pair. */
+bool fg_spectrum_is_real(const struct fg_spectrum *spectrum, int k);
+
 /* Names of at most three states that take part in mode k with at least 30 % of the largest |w_i v_i|,
  * joined by ", "; what does not fit into `text` is left out. */
 void fg_spectrum_states(const struct fg_spectrum *spectrum, int k, const char *const *names, size_t size,
