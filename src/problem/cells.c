@@ -57,6 +57,9 @@ flatgain_status fg_cells_fail(const struct fg_cells *cells, const struct fg_cell
     vsnprintf(text, sizeof text, format, arguments);
     va_end(arguments);
     cell_place(cells, cell, &line, &column);
+    if (cells->single)
+        return fg_fail_at(cells->error, FLATGAIN_BAD_PROBLEM, cells_name(cells), line, column, "%s: %s",
+                          cells->what, text);
     return fg_fail_at(cells->error, FLATGAIN_BAD_PROBLEM, cells_name(cells), line, column,
                       "%s row %d, column %d: %s", cells->what, cell->row + 1, cell->col + 1, text);
 }

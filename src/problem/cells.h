@@ -25,6 +25,7 @@ struct fg_cells {
     const char *name; /* ... or it is the file `name` */
     const char *text;
     size_t length;
+    bool single;    /* one number, no matrix: messages name no row and column */
     int rows, cols; /* out: found so far */
 };
 

@@ -64,14 +64,15 @@ int fg_word_distance(const char *a, const char *b)
     return d[rows][cols];
 }
 
-/* A word is near when at most a third of its letters are wrong. */
+/* A word is near when at most a third of the letters of the longer one are wrong. */
 static const char *nearest(const struct section *section, const char *key)
 {
     const char *best = NULL;
     int lowest = WORD_MAX;
     for (int i = 0; i < KNOWN_MAX && section->known[i]; i++) {
         int distance = fg_word_distance(section->known[i], key);
-        int allowed = ((int)strlen(section->known[i]) + 1) / 3;
+        size_t a = strlen(section->known[i]), b = strlen(key);
+        int allowed = ((int)(a > b ? a : b) + 1) / 3;
         if (distance <= allowed && distance < lowest) {
             lowest = distance;
             best = section->known[i];

@@ -31,8 +31,11 @@ static flatgain_status read_setting(struct fg_reader *reader, const struct fg_no
                               "the sampled setting is not available in this version; expected continuous or "
                               "discrete (a model already discretised at the scan time)");
     reader->problem->setting = strcmp(word, "discrete") == 0 ? FG_DISCRETE : FG_CONTINUOUS;
-    if (reader->problem->setting == FG_CONTINUOUS && strcmp(word, "continuous") != 0)
-        return FG_READER_FAIL(reader, node, "unknown setting; expected continuous or discrete");
+    if (reader->problem->setting == FG_CONTINUOUS && strcmp(word, "continuous") != 0) {
+        char quoted[FG_QUOTE_SIZE];
+        return FG_READER_FAIL(reader, node, "unknown setting %s; expected continuous or discrete",
+                              fg_quote(word, strlen(word), quoted));
+    }
     return FLATGAIN_OK;
 }
 
@@ -58,14 +61,14 @@ static flatgain_status read_plant(struct fg_reader *reader, const struct fg_node
     if (status == FLATGAIN_OK)
         status = fg_keys_check(reader, plant, "plant");
     if (status == FLATGAIN_OK)
-        status = need(reader, plant, "plant", "A", "how the states move (n x n)", &node);
+        status = need(reader, plant, "plant", "A", "A, how the states move (n x n)", &node);
     if (status == FLATGAIN_OK)
         status = fg_read_matrix(reader, node, "plant.A", "A", &problem->A);
     if (status == FLATGAIN_OK && problem->A.rows != problem->A.cols)
         return FG_READER_FAIL(reader, node, "A is %d x %d; expected as many rows as columns", problem->A.rows,
                               problem->A.cols);
     if (status == FLATGAIN_OK)
-        status = need(reader, plant, "plant", "B", "how the inputs move the states (n x m)", &node);
+        status = need(reader, plant, "plant", "B", "B, how the inputs move the states (n x m)", &node);
     if (status == FLATGAIN_OK)
         status = fg_read_matrix(reader, node, "plant.B", "B", &problem->B);
     if (status == FLATGAIN_OK && problem->B.rows != problem->A.rows)
@@ -73,7 +76,8 @@ static flatgain_status read_plant(struct fg_reader *reader, const struct fg_node
                               problem->B.cols, problem->A.rows,
                               problem->B.cols == problem->A.rows ? "; it looks transposed" : "");
     if (status == FLATGAIN_OK)
-        status = need(reader, plant, "plant", "C", "how the outputs follow from the states (p x n)", &node);
+        status =
+            need(reader, plant, "plant", "C", "C, how the outputs follow from the states (p x n)", &node);
     if (status == FLATGAIN_OK)
         status = fg_read_matrix(reader, node, "plant.C", "C", &problem->C);
     if (status == FLATGAIN_OK && problem->C.cols != problem->A.rows)
@@ -190,7 +194,7 @@ static flatgain_status read_start(struct fg_reader *reader, const struct fg_node
     reader->problem->reading = FG_START;
     flatgain_status status = fg_keys_check(reader, start, "start");
     if (status == FLATGAIN_OK)
-        status = need(reader, start, "start", "X0", "the mean of x x' at the start (n x n)", &node);
+        status = need(reader, start, "start", "X0", "X0, the mean of x x' at the start (n x n)", &node);
     return status == FLATGAIN_OK ? fg_read_matrix(reader, node, "start.X0", "X0", &reader->problem->W)
                                  : status;
 }
@@ -240,11 +244,11 @@ static flatgain_status read_weights(struct fg_reader *reader, const struct fg_no
     if (status == FLATGAIN_OK)
         status = fg_keys_check(reader, weights, "weights");
     if (status == FLATGAIN_OK)
-        status = need(reader, weights, "weights", "Q", "the weight of the states (n x n)", &node);
+        status = need(reader, weights, "weights", "Q", "Q, the weight of the states (n x n)", &node);
     if (status == FLATGAIN_OK)
         status = fg_read_matrix(reader, node, "weights.Q", "Q", &problem->Q);
     if (status == FLATGAIN_OK)
-        status = need(reader, weights, "weights", "R", "the weight of the inputs (m x m)", &node);
+        status = need(reader, weights, "weights", "R", "R, the weight of the inputs (m x m)", &node);
     if (status == FLATGAIN_OK)
         status = fg_read_matrix(reader, node, "weights.R", "R", &problem->R);
     if (status == FLATGAIN_OK && (node = fg_tree_find(weights, "N")))

@@ -29,7 +29,7 @@ static flatgain_status inside(const struct fg_reader *reader, const struct fg_ce
     const struct flatgain_problem *problem = reader->problem;
     if (cell->row < problem->m && cell->col < problem->p)
         return FLATGAIN_OK;
-    return fg_cells_fail(cells, cell, "outside the gain; expected %d x %d (%d inputs, %d outputs)",
+    return fg_cells_fail(cells, cell, "outside the gain; expected %d x %d (inputs: %d, outputs: %d)",
                          problem->m, problem->p, problem->m, problem->p);
 }
 
@@ -89,6 +89,9 @@ static flatgain_status read_pattern_cell(void *user, const struct fg_cells *cell
     if (strcmp(word, "free") == 0 && !minus)
         return FLATGAIN_OK;
     fg_quote(cell->text, cell->length, quoted);
+    if (strcmp(word, "free") == 0)
+        return fg_cells_fail(cells, cell,
+                             "-free has no meaning, a free entry takes either sign; expected free");
     if (fg_word_distance(word, "free") <= 1) /* "Free" twice would tie two gains unseen */
         return fg_cells_fail(cells, cell, "%s is too close to free; expected free, or another word", quoted);
     if (fg_word_distance(word, "none") == 0 || fg_word_distance(word, "inf") == 0 ||
@@ -115,8 +118,8 @@ static flatgain_status size_of(const struct fg_reader *reader, const struct fg_n
     if (cells->rows == problem->m && cells->cols == problem->p)
         return FLATGAIN_OK;
     return FG_READER_FAIL(
-        reader, node, "%s is %d x %d; expected %d x %d (%d inputs from B, %d outputs from C)", cells->what,
-        cells->rows, cells->cols, problem->m, problem->p, problem->m, problem->p);
+        reader, node, "%s is %d x %d; expected %d x %d (inputs, from B: %d; outputs, from C: %d)",
+        cells->what, cells->rows, cells->cols, problem->m, problem->p, problem->m, problem->p);
 }
 
 static flatgain_status no_market(const struct fg_reader *reader, const struct fg_node *node,

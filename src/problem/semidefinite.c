@@ -120,6 +120,8 @@ static flatgain_status indefinite(const struct fg_check *check, const char *key,
     char low[FG_NUMBER_SIZE], high[FG_NUMBER_SIZE];
     fg_number_round(values[0], 6, low);
     fg_number_round(values[M.rows - 1], 6, high);
+    if (M.rows == 1)
+        return fg_check_fail(check, key, "%s is negative (%s); expected 0 or more", what, low);
     return fg_check_fail(check, key,
                          "%s has the negative eigenvalue %s (the largest is %s), mostly along row %d; "
                          "expected none below zero",
@@ -234,9 +236,11 @@ flatgain_status fg_check_weights(const struct fg_check *check)
         status = fg_no_memory(check->error);
     } else {
         join(problem, M, false);
-        status = fg_check_semidefinite(
-            check, "weights.N", "[Q N; N' R] (Q and R are right by themselves, so N is too large for them)",
-            code, M);
+        status =
+            fg_check_semidefinite(check, "weights.N",
+                                  "[Q N; N' R] (rows of the states, then of the inputs; Q and R alone are "
+                                  "right, so N is too large for them)",
+                                  code, M);
         join(problem, M, true);
     }
     fg_arena_release(&scratch);

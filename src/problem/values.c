@@ -36,7 +36,8 @@ flatgain_status fg_read_number(const struct fg_reader *reader, const struct fg_n
 {
     if (node->kind != FG_NODE_SCALAR || node->length == 0)
         return FG_READER_FAIL(reader, node, "%s is %s; expected a number", what, fg_node_word(node));
-    struct fg_cells cells = {.what = what, .error = reader->error, .tree = reader->tree, .node = node};
+    struct fg_cells cells = {
+        .what = what, .error = reader->error, .tree = reader->tree, .node = node, .single = true};
     struct fg_cell cell = {.text = node->text, .length = node->length, .node = node};
     return fg_cell_number(&cells, &cell, "", value);
 }

@@ -84,7 +84,8 @@ static flatgain_status syntax_error(const struct builder *builder, const yaml_pa
         long line, column;
         fg_source_place(tree->source, tree->source_length, parser->problem_offset, &line, &column);
         return fg_fail_at(builder->error, FLATGAIN_BAD_PROBLEM, tree->name, line, column,
-                          "not UTF-8 text (%s); expected a YAML or JSON problem file", parser->problem);
+                          "%s, so this is not plain text; expected a YAML or JSON file in UTF-8",
+                          parser->problem);
     }
     const char *problem = parser->problem ? parser->problem : "syntax error";
     if (strstr(problem, "cannot start any token") && tab_there(tree, parser->problem_mark))
