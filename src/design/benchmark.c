@@ -254,8 +254,10 @@ static const char EXACT_OUTPUT[] =
 static const char ON_BOUNDARY[] = "a mode on the stability boundary is not seen by the weights or not "
                                   "disturbed, so this cost is approached "
                                   "only as that mode is left undamped";
-static const char NOT_STABILISABLE[] = "the inputs cannot stabilise every mode of the plant";
-static const char NOT_DETECTABLE[] = "the outputs do not show every mode that is not stable by itself";
+static const char NOT_STABILISABLE[] =
+    "the inputs cannot stabilise every mode of the plant, at least not to working accuracy";
+static const char NOT_DETECTABLE[] =
+    "the outputs do not show every mode that is not stable by itself, at least not to working accuracy";
 static const char NOT_SETTLED[] =
     "the Riccati equation has no stabilising solution and its limit could not be computed reliably";
 

@@ -216,6 +216,11 @@ struct fg_local_answer fg_local_minimise(struct fg_local *l, struct fg_cost *cos
                 answer.end = FG_LOCAL_STALLED;
                 return answer;
             }
+            if (answer.J <= limits->negligible) {
+                answer.end = FG_LOCAL_MINIMUM;
+                answer.residual = answer.smallest = answer.largest = 0;
+                return answer;
+            }
             if (answer.residual <= TOLERANCE && answer.smallest >= -ACCEPTABLE) {
                 answer.end = FG_LOCAL_MINIMUM;
                 return answer;

@@ -31,6 +31,7 @@ struct fg_local_answer {
 
 struct fg_local_limits {
     int iterations;
+    double negligible; /* J at or below this counts as 0: a minimum, since J >= 0 */
     bool (*stop)(void *user); /* may be NULL: asked once per iteration */
     void *user;
 };

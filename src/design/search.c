@@ -5,6 +5,7 @@
 #include <string.h>
 
 #include "base/pool.h"
+#include "design/continuation.h"
 #include "design/local.h"
 #include "design/scaling.h"
 #include "design/stabilise.h"
@@ -12,9 +13,11 @@
 
 /* Starts done before the stopping rule is asked again; fixed, so that the answer does not depend on the
  * number of threads. */
-enum { BATCH = 8, ITERATIONS = 200 };
+enum { BATCH = 8, ITERATIONS = 200, HOPELESS = 24 };
 /* Two minima are one when their costs agree to this, relative. */
 static const double SAME_COST = 1e-6;
+/* J below this part of its natural size is zero within rounding. */
+static const double NEGLIGIBLE = 1e-14;
 /* Hessian and gradient below this, relative to J in natural units: J does not depend on the gain. */
 static const double FLAT = 1e-6;
 
@@ -55,13 +58,21 @@ static bool told_to_stop(void *user)
     return atomic_load(&shared->stop) || atomic_load(&shared->no_memory);
 }
 
+static struct fg_local_limits limits_of(struct worker *worker)
+{
+    return (struct fg_local_limits){.iterations = ITERATIONS,
+                                    .negligible = NEGLIGIBLE * fg_natural_cost(worker->shared->scaled),
+                                    .stop = told_to_stop,
+                                    .user = worker};
+}
+
 static void one_start(void *context, int offset)
 {
     struct worker *worker = context;
     struct shared *shared = worker->shared;
     const struct fg_scaled *scaled = shared->scaled;
     struct record *record = &shared->records[shared->first + offset];
-    struct fg_local_limits limits = {.iterations = ITERATIONS, .stop = told_to_stop, .user = worker};
+    struct fg_local_limits limits = limits_of(worker);
     if (told_to_stop(worker))
         return;
     if (fg_start(scaled, shared->today_theta, shared->request->seed, shared->first + offset, record->theta) !=
@@ -89,7 +100,8 @@ static void one_start(void *context, int offset)
 
 /* Distinct minima among the records so far, best first; one start each in `representative` (the one with
  * the smallest residual). Returns their number. */
-static int distinct_minima(const struct record *records, int count, int *representative, int *hits, int *converged)
+static int distinct_minima(const struct record *records, int count, double negligible, int *representative,
+                           int *hits, int *converged)
 {
     int distinct = 0;
     *converged = 0;
@@ -101,7 +113,7 @@ static int distinct_minima(const struct record *records, int count, int *represe
         int k = 0;
         for (; k < distinct; k++) {
             double J = records[representative[k]].local.J;
-            if (fabs(r->local.J - J) <= SAME_COST * fabs(J))
+            if (fabs(r->local.J - J) <= SAME_COST * fabs(J) + negligible)
                 break;
         }
         if (k < distinct) {
@@ -243,7 +255,8 @@ static flatgain_status run(struct shared *shared, struct worker *workers, void *
                            struct fg_arena *arena, struct fg_search_answer *answer, flatgain_error *error)
 {
     int *representative = fg_arena_ints(arena, (size_t)starts), *hits = fg_arena_ints(arena, (size_t)starts);
-    int converged = 0, count = 0;
+    double negligible = NEGLIGIBLE * fg_natural_cost(shared->scaled);
+    int converged = 0, count = 0, stabilised = 0;
     if (arena->failed)
         return fg_no_memory(error);
     workers[0].calling_thread = true;
@@ -255,7 +268,7 @@ static flatgain_status run(struct shared *shared, struct worker *workers, void *
         if (atomic_load(&shared->no_memory))
             return fg_no_memory(error);
         count += batch;
-        answer->distinct = distinct_minima(shared->records, count, representative, hits, &converged);
+        answer->distinct = distinct_minima(shared->records, count, negligible, representative, hits, &converged);
         answer->expected_minima = expected_minima(answer->distinct, converged);
         int best = best_record(shared->records, count);
         shared->progress.starts_done = count;
@@ -265,6 +278,22 @@ static flatgain_status run(struct shared *shared, struct worker *workers, void *
             answer->rule_satisfied = true;
             break;
         }
+        stabilised = 0;
+        for (int i = 0; i < count; i++)
+            stabilised += shared->records[i].stabilised;
+        if (answer->distinct == 0 && stabilised >= HOPELESS)
+            break; /* no minimum in sight: more starts would end at the boundary or at infinity as well */
+    }
+    int best = best_record(shared->records, count);
+    if (best >= 0 && shared->records[best].local.end != FG_LOCAL_MINIMUM && !atomic_load(&shared->stop)) {
+        struct record *record = &shared->records[best];
+        struct fg_local_limits limits = limits_of(&workers[0]);
+        if (fg_continue_to_infimum(shared->scaled, workers[0].cost, workers[0].local, &limits, record->theta,
+                                   &record->local) != FLATGAIN_OK)
+            return fg_no_memory(error);
+        fg_cost_at(workers[0].cost, record->theta);
+        record->abscissa = fg_cost_abscissa(workers[0].cost);
+        answer->distinct = distinct_minima(shared->records, count, negligible, representative, hits, &converged);
     }
     answer->interrupted = atomic_load(&shared->stop);
     report(shared, count, answer, representative, hits, arena);

@@ -5,9 +5,9 @@
 
 /* Weight on the gains in the shifted problem: small against the unit weight on the states, so that the
  * gains are free to move, but not zero, so that they do not run away. */
-static const double SHIFT_EFFORT = 1e-3;
+static const double SHIFT_EFFORT = 0.2;
 static const double TIGHTEST = 1e-4; /* smallest distance of the shift from the abscissa, relative */
-enum { SHIFT_ROUNDS = 60, SHIFT_STEPS = 3, DIRECT_STEPS = 120, LINE_STEPS = 30 };
+enum { SHIFT_ROUNDS = 60, SHIFT_STEPS = 10, DIRECT_STEPS = 120, LINE_STEPS = 30 };
 
 struct fg_stabiliser {
     struct fg_plant plant;
