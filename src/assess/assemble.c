@@ -125,6 +125,19 @@ static flatgain_status begin(struct fg_assembly *a, const struct flatgain_proble
     return a->arena->failed ? fg_no_memory(error) : FLATGAIN_OK;
 }
 
+/* A sensor's filter is in no weight by construction: its mode being unweighted is no news. */
+static bool is_sensor_lag(const struct fg_assembly *a, const struct fg_mode *mode)
+{
+    if (mode->uncontrollable || mode->unobservable || mode->undisturbed || mode->im != 0)
+        return false;
+    for (int i = 0; i < a->problem->p; i++) {
+        double lag = a->problem->outputs[i].lag;
+        if (lag > 0 && fabs(mode->re * lag + 1) < 1e-6)
+            return true;
+    }
+    return false;
+}
+
 static void list_hidden(struct fg_assembly *a)
 {
     struct fg_findings *f = a->findings;
@@ -134,6 +147,8 @@ static void list_hidden(struct fg_assembly *a)
     for (int k = 0; k < a->open.count; k++) {
         const struct fg_mode *mode = &a->open.mode[k];
         if (!mode->uncontrollable && !mode->unobservable && !mode->unweighted && !mode->undisturbed)
+            continue;
+        if (is_sensor_lag(a, mode))
             continue;
         double size = hypot(mode->re, mode->im);
         f->hidden_modes[f->hidden++] =
@@ -270,6 +285,27 @@ static flatgain_outcome outcome_of(const struct fg_search_answer *answer)
     return FLATGAIN_TUNED;
 }
 
+/* The search works in units of its own and comes back with the last digit rounded. Here K gets the pattern
+ * exactly: fixed and tied entries as written, nothing beyond a bound, and on it what is there but for
+ * rounding. */
+static void snap_to_pattern(struct fg_assembly *a, double *K)
+{
+    const struct fg_pattern *pattern = &a->problem->pattern;
+    const double rounding = 1e-12;
+    double *theta = fg_arena_doubles(a->arena, (size_t)pattern->count + 1);
+    if (!theta)
+        return;
+    fg_pattern_parameters(pattern, K, theta);
+    for (int k = 0; k < pattern->count; k++) {
+        double lower = pattern->lower[k], upper = pattern->upper[k];
+        if (isfinite(lower) && fabs(theta[k] - lower) <= rounding * fabs(lower))
+            theta[k] = lower;
+        if (isfinite(upper) && fabs(theta[k] - upper) <= rounding * fabs(upper))
+            theta[k] = upper;
+    }
+    fg_pattern_gain(pattern, theta, K);
+}
+
 static void copy_search(struct fg_assembly *a, uint64_t seed)
 {
     struct fg_findings *f = a->findings;
@@ -288,8 +324,25 @@ static void copy_search(struct fg_assembly *a, uint64_t seed)
         f->search.least_unstable = finite_or_nan(s->abscissa);
     f->search.minima = fg_arena_get(a->arena, (size_t)(s->distinct + 1) * sizeof *f->search.minima);
     if (f->search.minima)
-        for (int k = 0; k < s->distinct; k++)
+        for (int k = 0; k < s->distinct; k++) {
+            if (a->restricted)
+                snap_to_pattern(a, s->minima[k].K);
             f->search.minima[k] = (struct fg_minimum){s->minima[k].cost, s->minima[k].hits, s->minima[k].K};
+        }
+}
+
+/* While the second search runs, the user's callback keeps hearing about the first one, whose best cost is
+ * the one that counts. */
+struct relay {
+    const flatgain_options *options;
+    flatgain_progress first;
+};
+
+static int pass_on(const flatgain_progress *ignored, void *user)
+{
+    const struct relay *relay = user;
+    (void)ignored;
+    return relay->options->progress(&relay->first, relay->options->user);
 }
 
 static flatgain_status search(struct fg_assembly *a, const flatgain_options *options, flatgain_error *error)
@@ -310,9 +363,15 @@ static flatgain_status search(struct fg_assembly *a, const flatgain_options *opt
         return status;
     /* What the user's limits cost: the same search without them. The gain just found is a start, so that
      * the answer cannot be worse. */
-    struct fg_matrix found = {a->problem->m, a->problem->p, a->answer.K};
+    const struct fg_search_answer *first = &a->answer;
+    struct fg_matrix found = {a->problem->m, a->problem->p, first->K};
+    struct relay relay = {options, {first->starts, options->starts, first->distinct, first->cost}};
     request.pattern = &a->free;
-    request.today = isfinite(a->answer.cost) ? &found : request.today;
+    request.today = isfinite(first->cost) ? &found : request.today;
+    if (options->progress) {
+        request.progress = pass_on;
+        request.user = &relay;
+    }
     status = fg_search(&request, a->arena, &a->unstructured, error);
     a->has_unstructured = status == FLATGAIN_OK && !a->unstructured.interrupted;
     return status;
@@ -340,6 +399,8 @@ flatgain_status fg_assemble_tune(const struct flatgain_problem *problem, const f
     f->outcome = stopped ? FLATGAIN_INTERRUPTED : outcome_of(&a.answer);
     copy_search(&a, options->seed);
     bool found = a.answer.end != FG_SEARCH_NOT_FOUND && isfinite(a.answer.cost);
+    if (found && a.restricted)
+        snap_to_pattern(&a, a.answer.K);
     status = found        ? assess_gain(&a, a.answer.K, a.answer.cost, error)
              : a.answer.K ? find_closed_modes(&a, a.answer.K, error)
                           : FLATGAIN_OK;

@@ -9,6 +9,9 @@ enum { MOST_RUNGS = 7 };
  * about half the digits when everything cancels. Percentages of it mean nothing. */
 static const double ZERO_TO_ROUNDING = 1e-9;
 
+/* A static gain this close to a limit has reached it: costs agree to about ten digits. */
+static const double REACHED = 1e-8;
+
 /* J_LQR <= J_LQG <= J(K) may be missed by this much, relative, before it is called a fault. */
 static const double ORDER_TOLERANCE = 1e-6;
 
@@ -44,7 +47,8 @@ static const char *price_name(const struct fg_rung *from, const struct fg_rung *
     if (strcmp(from->key, "none") == 0)
         return "price of no control";
     if (strcmp(from->key, "today") == 0)
-        return "price of keeping today's gain";
+        return to_lqg ? "price of today's gain against any linear controller"
+                      : "price of keeping today's gain";
     if (strcmp(from->key, "judged") == 0)
         return "price of this gain against any linear controller";
     if (strcmp(from->key, "tuned") == 0 && !to_lqg)
@@ -52,11 +56,27 @@ static const char *price_name(const struct fg_rung *from, const struct fg_rung *
     return "price of staying static";
 }
 
-static const char *bound_note(const struct fg_bound *bound, double cost)
+/* A limit that some static gain reaches is attained after all: with noise-free measurements of every state,
+ * for instance, the best gain is the LQR gain. */
+static void settle_limits(struct fg_assembly *a)
 {
-    if (bound->kind == FG_BOUND_NONE || isnan(cost))
-        return bound->why ? bound->why : "could not be computed";
-    if (bound->kind == FG_BOUND_LIMIT)
+    struct fg_findings *f = a->findings;
+    double best =
+        fmin(isfinite(f->cost) ? f->cost : INFINITY, isfinite(f->cost_today) ? f->cost_today : INFINITY);
+    if (a->has_unstructured && a->unstructured.end == FG_SEARCH_MINIMUM)
+        best = fmin(best, a->unstructured.cost);
+    bool final = f->outcome == FLATGAIN_TUNED || f->outcome == FLATGAIN_JUDGED;
+    if (!f->lqg_attained && final && best <= f->cost_lqg + REACHED * fabs(f->cost_lqg) && f->cost_lqg > 0) {
+        f->lqg_attained = true;
+        f->lqg_why = "a limit in general, but a static gain reaches it here";
+    }
+}
+
+static const char *bound_note(const char *why, bool attained, double cost)
+{
+    if (isnan(cost))
+        return why ? why : "could not be computed";
+    if (!attained)
         return "a limit: no real controller reaches it";
     return "";
 }
@@ -98,8 +118,10 @@ static void add_rungs(struct fg_assembly *a)
             cost = f->cost;
         add(f, "unstructured", "best static gain, no limits", cost, end_note(free->end));
     }
-    add(f, "lqg", "any linear controller (LQG)", f->cost_lqg, bound_note(&a->benchmark.lqg, f->cost_lqg));
-    add(f, "lqr", "every state known (LQR)", f->cost_lqr, bound_note(&a->benchmark.lqr, f->cost_lqr));
+    add(f, "lqg", "any linear controller (LQG)", f->cost_lqg,
+        bound_note(f->lqg_why, f->lqg_attained, f->cost_lqg));
+    add(f, "lqr", "every state known (LQR)", f->cost_lqr,
+        bound_note(f->lqr_why, f->lqr_attained, f->cost_lqr));
 }
 
 static void check_order(struct fg_findings *f)
@@ -126,6 +148,7 @@ void fg_ladder_fill(struct fg_assembly *a)
     f->ladder = fg_arena_get(a->arena, MOST_RUNGS * sizeof *f->ladder);
     if (!f->ladder)
         return;
+    settle_limits(a);
     add_rungs(a);
     double scale = 0;
     for (int i = 0; i < f->rungs; i++)

@@ -102,7 +102,7 @@ static void judge_gap(struct fg_assembly *a)
 static const char *gap_phrase(struct fg_assembly *a)
 {
     struct fg_findings *f = a->findings;
-    if (isnan(f->gap_percent))
+    if (isnan(f->gap_percent) || f->verdict != FG_VERDICT_NONE) /* the verdict says it */
         return "";
     const char *gap = fg_words_percent(a->arena, f->gap_percent);
     if (f->lqg_attained)
@@ -186,7 +186,7 @@ static const char *summarise(struct fg_assembly *a)
             fg_arena_text(a->arena, "The gain stabilises the plant; its cost is %s%s.", cost, gap_phrase(a)));
     case FLATGAIN_INSPECTED:
         return or_empty(fg_arena_text(
-            a->arena, "The problem is readable and consistent; the plant is %s without control.",
+            a->arena, "The problem is complete and consistent; the plant is %s without control.",
             a->open_stable ? "stable" : "not stable"));
     case FLATGAIN_NOT_FOUND:
         return not_found_summary(a);

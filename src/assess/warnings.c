@@ -47,6 +47,8 @@ static const char *list_modes(struct fg_assembly *a, const struct fg_modes *mode
 static void warn_hidden(struct fg_assembly *a)
 {
     const struct fg_modes *modes = &a->open;
+    if (a->findings->proof.kind) /* the proof says it */
+        return;
     bool *stuck = fg_arena_get(a->arena, (size_t)modes->count + 1);
     bool *blind = fg_arena_get(a->arena, (size_t)modes->count + 1);
     if (!stuck || !blind)

@@ -51,33 +51,37 @@ static int worst(int a, int b)
 /* ---- progress -------------------------------------------------------------------------------- */
 
 struct progress_line {
-    bool shown; /* standard error is a terminal and nobody asked for quiet */
-    int length; /* of the line that stands there now */
+    bool shown;    /* standard error is a terminal and nobody asked for quiet */
+    char now[120]; /* what stands there */
 };
 
 static void erase(struct progress_line *line)
 {
-    if (line->length > 0)
-        fprintf(stderr, "\r%*s\r", line->length, "");
-    line->length = 0;
+    if (line->now[0])
+        fprintf(stderr, "\r%*s\r", (int)strlen(line->now), "");
+    line->now[0] = '\0';
 }
 
 static int on_progress(const flatgain_progress *progress, void *user)
 {
     struct progress_line *line = user;
-    if (line->shown) {
-        char text[120];
-        int length;
-        if (isfinite(progress->best))
-            length = snprintf(text, sizeof text, "start %d of at most %d, %d minim%s, best cost %.6g",
-                              progress->starts_done, progress->starts_max, progress->minima,
-                              progress->minima == 1 ? "um" : "a", progress->best);
-        else
-            length = snprintf(text, sizeof text, "start %d of at most %d, nothing stabilised yet",
-                              progress->starts_done, progress->starts_max);
-        fprintf(stderr, "\r%s%*s", text, line->length > length ? line->length - length : 0, "");
+    char text[sizeof line->now];
+    if (!line->shown)
+        return cli_signals_caught() != 0;
+    if (isfinite(progress->best))
+        snprintf(text, sizeof text, "%d of at most %d starts, %d minim%s, best cost %.6g",
+                 progress->starts_done, progress->starts_max, progress->minima,
+                 progress->minima == 1 ? "um" : "a", progress->best);
+    else if (progress->starts_done > 0)
+        snprintf(text, sizeof text, "%d of at most %d starts, nothing stabilised yet", progress->starts_done,
+                 progress->starts_max);
+    else
+        snprintf(text, sizeof text, "searching, at most %d starts", progress->starts_max);
+    if (strcmp(text, line->now) != 0) {
+        erase(line);
+        snprintf(line->now, sizeof line->now, "%s", text);
+        fputs(text, stderr);
         fflush(stderr);
-        line->length = length;
     }
     return cli_signals_caught() != 0;
 }

@@ -1,5 +1,6 @@
 #include "write/write.h"
 
+#include <float.h>
 #include <math.h>
 #include <stdio.h>
 #include <string.h>
@@ -10,7 +11,10 @@
 
 enum {
     NARROWEST = 40,
-    FEW_POLES = 6 /* lines of poles without --verbose */
+    FEW_POLES = 6, /* lines of poles without --verbose */
+    POLE = 23,     /* columns of the table of poles */
+    DAMPING = 8,
+    FALL = 15
 };
 
 static const char *time_unit(const struct flatgain_problem *problem)
@@ -57,6 +61,22 @@ static double decay_time(const struct flatgain_problem *problem, const struct fg
     return problem->setting == FG_DISCRETE ? -1 / log(pole->speed) : -1 / pole->re;
 }
 
+/* A list "a, b, c" in `room` columns: as many whole names as fit, the first one cut if it must be. */
+static void put_whole_names(const struct fg_page *page, const char *names, int room)
+{
+    char part[256];
+    snprintf(part, sizeof part, "%s", names);
+    while (fg_columns(part) > room) {
+        char *comma = strrchr(part, ',');
+        if (!comma) {
+            fg_put_left(page, FG_FAINT, part, room < 1 ? 1 : room);
+            return;
+        }
+        *comma = '\0';
+    }
+    fg_put(page, FG_FAINT, part);
+}
+
 static void put_poles(const struct fg_page *page, const struct fg_findings *f, const char *name,
                       const struct fg_pole *poles, bool all)
 {
@@ -71,9 +91,9 @@ static void put_poles(const struct fg_page *page, const struct fg_findings *f, c
              !all && left > FEW_POLES ? "; --verbose shows all" : "");
     fg_put_heading(page, name, remark);
     snprintf(text, sizeof text, "falls to 37 %%");
-    fg_put_left(page, FG_FAINT, "  pole", 26);
-    fg_put_right(page, FG_FAINT, discrete ? "radius" : "damping", 9);
-    fg_put_right(page, FG_FAINT, text, 16);
+    fg_put_left(page, FG_FAINT, "  pole", 2 + POLE);
+    fg_put_right(page, FG_FAINT, discrete ? "radius" : "damping", DAMPING);
+    fg_put_right(page, FG_FAINT, text, FALL);
     fg_put(page, FG_FAINT, "  states");
     fg_newline(page);
     for (int k = 0; k < f->order; k++) {
@@ -95,9 +115,9 @@ static void put_poles(const struct fg_page *page, const struct fg_findings *f, c
             snprintf(text, sizeof text, "%s", number);
         bool stable = discrete ? pole->speed < 1 : pole->re < 0;
         fg_put(page, FG_PLAIN, "  ");
-        fg_put_left(page, stable ? FG_PLAIN : FG_BAD, text, 24);
+        fg_put_left(page, stable ? FG_PLAIN : FG_BAD, text, POLE);
         fg_put_right(page, FG_PLAIN, fg_text_number(discrete ? pole->speed : pole->damping, 3, false, number),
-                     9);
+                     DAMPING);
         if (stable)
             snprintf(text, sizeof text, "%s %s",
                      fg_text_number(pole->speed == 0 ? 0 : decay_time(f->problem, pole), 3, false, number),
@@ -107,14 +127,10 @@ static void put_poles(const struct fg_page *page, const struct fg_findings *f, c
         size_t length = strlen(text);
         if (text[length - 1] == ' ')
             text[length - 1] = '\0';
-        fg_put_right(page, stable ? FG_PLAIN : FG_BAD, text, 16);
+        fg_put_right(page, stable ? FG_PLAIN : FG_BAD, text, FALL);
         if (pole->states && pole->states[0]) {
             fg_put(page, FG_PLAIN, "  ");
-            int room = page->width - 2 - 24 - 9 - 16 - 2;
-            if (fg_columns(pole->states) > room)
-                fg_put_left(page, FG_FAINT, pole->states, room < 1 ? 1 : room);
-            else
-                fg_put(page, FG_FAINT, pole->states);
+            put_whole_names(page, pole->states, page->width - 2 - POLE - DAMPING - FALL - 2);
         }
         fg_newline(page);
     }
@@ -163,9 +179,11 @@ static void put_margins(const struct fg_page *page, const struct fg_findings *f)
     }
     if (isnan(f->peak_sensitivity))
         return;
-    snprintf(line, sizeof line, "all loops together: peak sensitivity %s at %s rad per %s",
-             fg_text_number(f->peak_sensitivity, 3, false, number),
-             fg_text_number(f->peak_frequency, 3, false, low), time_unit(f->problem));
+    snprintf(line, sizeof line, "all loops together: peak sensitivity %s",
+             fg_text_number(f->peak_sensitivity, 3, false, number));
+    if (!isnan(f->peak_frequency)) /* NAN: the peak is at infinite frequency */
+        snprintf(line + strlen(line), sizeof line - strlen(line), " at %s rad per %s",
+                 fg_text_number(f->peak_frequency, 3, false, low), time_unit(f->problem));
     fg_put_wrapped(page, FG_FAINT, "  ", line);
 }
 
@@ -198,13 +216,13 @@ static void put_search(const struct fg_page *page, const struct fg_findings *f, 
         return;
     char number[FG_NUMBER_SIZE], other[FG_NUMBER_SIZE], line[400];
     fg_put_heading(page, "Search", "");
-    snprintf(line, sizeof line, "%d start%s, %d stabilised, %d distinct %s, %ld cost evaluations%s",
+    snprintf(line, sizeof line, "%d start%s (%d stabilised), %d distinct %s, %ld evaluations%s",
              f->search.starts, f->search.starts == 1 ? "" : "s", f->search.stabilised, f->search.distinct,
              f->search.distinct == 1 ? "minimum" : "minima", f->search.evaluations,
              f->search.rule_satisfied ? "; stopping rule met" : "");
     fg_put_wrapped(page, FG_PLAIN, "  ", line);
     if (!isnan(f->search.residual)) {
-        snprintf(line, sizeof line, "residual gradient %s, smallest curvature %s (both relative to the cost)",
+        snprintf(line, sizeof line, "residual gradient %s, smallest curvature %s, relative to the cost",
                  fg_text_number(f->search.residual, 2, false, number),
                  fg_text_number(f->search.smallest_curvature, 2, false, other));
         fg_put_wrapped(page, FG_PLAIN, "  ", line);
@@ -227,9 +245,14 @@ static void put_condition(const struct fg_page *page, const struct fg_findings *
     if (isnan(f->condition))
         return;
     char number[FG_NUMBER_SIZE], line[160];
-    snprintf(line, sizeof line, "Condition of the open-loop modes: %s%s",
-             fg_text_number(f->condition, 3, false, number),
-             f->condition > 1e8 ? " (nearly defective: poles are sensitive to the last digits of A)" : "");
+    if (f->condition > 1 / DBL_EPSILON)
+        snprintf(line, sizeof line,
+                 "Condition of the open-loop modes: defective (modes share an eigenvector).");
+    else
+        snprintf(line, sizeof line, "Condition of the open-loop modes: %s%s",
+                 fg_text_number(f->condition, 3, false, number),
+                 f->condition > 1e8 ? " (nearly defective: poles are sensitive to the last digits of A)"
+                                    : "");
     fg_newline(page);
     fg_put_wrapped(page, FG_PLAIN, "", line);
 }

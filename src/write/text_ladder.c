@@ -110,6 +110,11 @@ void fg_text_ladder(const struct fg_page *page, const struct fg_findings *f, boo
         fg_newline(page);
         if (rung->note[0])
             fg_put_wrapped(page, FG_FAINT, "      ", rung->note);
+        const char *why = strcmp(rung->key, "lqg") == 0   ? f->lqg_why
+                          : strcmp(rung->key, "lqr") == 0 ? f->lqr_why
+                                                          : NULL;
+        if (exact && why)
+            fg_put_wrapped(page, FG_FAINT, "      ", why);
         put_price(page, rung);
     }
     if (!isnan(f->captured_percent) && f->has_gain) {
