@@ -169,7 +169,7 @@ static bool gain(bool discrete, struct fg_riccati_scaled p, struct fg_matrix S, 
 }
 
 /* Largest |a - b|_ij / sqrt(b_ii b_jj), with diagonals below 1e-14 of the largest raised to that. */
-static double change(struct fg_matrix a, struct fg_matrix b)
+static double relative_change(struct fg_matrix a, struct fg_matrix b)
 {
     double top = 0, worst = 0;
     for (int i = 0; i < b.rows; i++)
@@ -184,12 +184,22 @@ static double change(struct fg_matrix a, struct fg_matrix b)
     return worst;
 }
 
+static double absolute_change(struct fg_matrix a, struct fg_matrix b)
+{
+    double worst = 0;
+    for (size_t i = 0; i < (size_t)a.rows * a.cols; i++)
+        worst = fmax(worst, fabs(a.at[i] - b.at[i]));
+    return worst;
+}
+
 bool fg_riccati_refine(bool discrete, struct fg_arena *arena, struct fg_riccati_scaled p, struct fg_matrix S,
                        struct fg_matrix L)
 {
     enum { STEPS = 60 };
     const double enough = 1e-15; /* relative change at which nothing more can be gained */
-    const double settled = 1e-5; /* a change that stops falling above this is not convergence */
+    const double settled = 1e-5; /* a change that stops falling above this is not convergence ... */
+    /* ... unless S is nothing but rounding (its true value 0) beside what Q costs in one time constant */
+    double zero = 1e-8 * fg_matrix_max_abs(p.Q) / (discrete ? 1 : fmax(fg_matrix_max_abs(p.A), 1e-300));
     int n = p.A.rows, m = p.B.cols;
     struct fg_matrix SB = fg_matrix_new(arena, n, m), M = fg_matrix_new(arena, m, m);
     struct fg_matrix RL = fg_matrix_new(arena, m, n), Qcl = fg_matrix_new(arena, n, n);
@@ -215,8 +225,8 @@ bool fg_riccati_refine(bool discrete, struct fg_arena *arena, struct fg_riccati_
             arena->failed = arena->failed || memory;
             return false;
         }
-        double moved = change(S, next);
-        if (step > 0 && moved >= 0.9 * last && moved < settled)
+        double moved = relative_change(S, next);
+        if (step > 0 && moved >= 0.9 * last && (moved < settled || absolute_change(S, next) < zero))
             return gain(discrete, p, S, SB, M, L);
         memcpy(S.at, next.at, (size_t)n * n * sizeof(double));
         if (moved <= enough)
