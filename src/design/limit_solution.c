@@ -85,7 +85,10 @@ static bool first_stage(const struct fg_limit_problem *p, const double *d, struc
         }
     if (!fg_all_finite((size_t)(n + m) * (n + m), M.at) || !fg_all_finite((size_t)n * n, s->A.at))
         return false;
-    struct fg_matrix H = fg_factor(&s->arena, M);
+    /* A covariance of lower rank that was converted to other units is so only to rounding, and rounding of
+     * 1e-16 would be a factor of 1e-8, far from nothing. */
+    const double lower_rank = 1e-13;
+    struct fg_matrix H = fg_factor_at(&s->arena, M, lower_rank);
     if (!H.at)
         return false;
     s->Hx = block(&s->arena, H, 0, 0, H.rows, n);

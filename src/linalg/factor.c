@@ -6,6 +6,11 @@
 
 struct fg_matrix fg_factor(struct fg_arena *arena, struct fg_matrix S)
 {
+    return fg_factor_at(arena, S, -1); /* LAPACK's own: n * eps * largest diagonal */
+}
+
+struct fg_matrix fg_factor_at(struct fg_arena *arena, struct fg_matrix S, double tolerance)
+{
     int n = S.rows, rank = 0, info = 0;
     struct fg_arena scratch = {0};
     struct fg_matrix U = fg_matrix_new(&scratch, n, n), H = {0, n, NULL};
@@ -22,7 +27,6 @@ struct fg_matrix fg_factor(struct fg_arena *arena, struct fg_matrix S)
         for (int i = 0; i < n; i++)
             FG_AT(U, i, j) = scale[i] > 0 && scale[j] > 0 ? FG_AT(S, i, j) / (scale[i] * scale[j]) : 0;
     if (n > 0 && fg_matrix_max_abs(U) > 0) {
-        double tolerance = -1; /* LAPACK's own: n * eps * largest diagonal */
         dpstrf_("U", &n, U.at, &n, pivot, &rank, &tolerance, work, &info, 1);
     }
     H = fg_matrix_new(arena, rank, n);

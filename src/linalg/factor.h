@@ -9,4 +9,7 @@
  * rounding size is dropped. H.at is NULL when memory is out. Cholesky with pivoting (LAPACK dpstrf). */
 struct fg_matrix fg_factor(struct fg_arena *arena, struct fg_matrix S);
 
+/* The same with the rank decided at `tolerance` times the unit diagonal instead of LAPACK's n eps. */
+struct fg_matrix fg_factor_at(struct fg_arena *arena, struct fg_matrix S, double tolerance);
+
 #endif
