@@ -53,32 +53,34 @@ static void warn_hidden(struct fg_assembly *a)
     bool *blind = fg_arena_get(a->arena, (size_t)modes->count + 1);
     if (!stuck || !blind)
         return;
-    bool any_stuck = false, any_blind = false;
+    int stuck_count = 0, blind_count = 0;
     for (int i = 0; i < modes->count; i++) {
         stuck[i] = modes->mode[i].uncontrollable;
         blind[i] = modes->mode[i].unobservable && !stuck[i];
-        any_stuck = any_stuck || stuck[i];
-        any_blind = any_blind || blind[i];
+        stuck_count += stuck[i];
+        blind_count += blind[i];
     }
-    if (any_stuck)
+    if (stuck_count > 0)
         fg_warn(a->findings, "hidden-mode",
                 fg_arena_text(a->arena,
-                              "No input moves the mode %s: no gain changes it. If it should be "
-                              "controlled, check B or add an actuator.",
-                              list_modes(a, modes, stuck)));
-    if (any_blind)
+                              "No input moves the mode%s %s: no gain changes %s. To control %s, check B "
+                              "or add an actuator.",
+                              stuck_count > 1 ? "s" : "", list_modes(a, modes, stuck),
+                              stuck_count > 1 ? "them" : "it", stuck_count > 1 ? "them" : "it"));
+    if (blind_count > 0)
         fg_warn(a->findings, "hidden-mode",
                 fg_arena_text(a->arena,
-                              "No output shows the mode %s: no law on these measurements changes "
-                              "it. If it should be controlled, check C or add a sensor.",
-                              list_modes(a, modes, blind)));
+                              "No output shows the mode%s %s: no law on these measurements changes %s. "
+                              "To control %s, check C or add a sensor.",
+                              blind_count > 1 ? "s" : "", list_modes(a, modes, blind),
+                              blind_count > 1 ? "them" : "it", blind_count > 1 ? "them" : "it"));
 }
 
 /* Slow closed-loop modes that J does not see or no disturbance reaches. */
 static void warn_unseen(struct fg_assembly *a)
 {
     const struct fg_modes *modes = &a->closed;
-    if (!a->findings->has_gain || !a->findings->stable)
+    if (!a->findings->has_gain || !a->findings->stable || a->findings->outcome == FLATGAIN_BOUNDARY)
         return;
     double fastest = 0;
     for (int i = 0; i < modes->count; i++)
@@ -193,34 +195,62 @@ static void warn_bounds(struct fg_assembly *a)
                       total == 1 ? "A gain sits" : "Gains sit", text));
 }
 
+/* "; 2 other loops are below that as well" */
+static const char *others(struct fg_assembly *a, int flagged, const char *side)
+{
+    if (flagged < 2)
+        return "";
+    return or_empty(fg_arena_text(a->arena, "; %d other loop%s %s that as well", flagged - 1,
+                                  flagged == 2 ? " is" : "s are", side));
+}
+
+/* One warning for each kind of margin: it names the worst loop and counts the others. */
 static void warn_margins(struct fg_assembly *a)
 {
     const struct fg_findings *f = a->findings;
+    const struct fg_loop_margin *phase = NULL, *gain = NULL, *peak = NULL;
+    int phases = 0, gains = 0, peaks = 0;
     for (int i = 0; i < f->margins; i++) {
         const struct fg_loop_margin *loop = &f->margin[i];
-        const char *input = a->problem->inputs[loop->input].name;
-        if (loop->phase_deg < LEAST_PHASE_DEG)
-            fg_warn(a->findings, "phase-margin",
-                    fg_arena_text(a->arena,
-                                  "The loop at %s has a phase margin of only %s degrees (common "
-                                  "practice: %g or more). Delays that the model leaves out may make "
-                                  "it unstable; weigh this input more in R.",
-                                  input, fg_words_number(a->arena, loop->phase_deg, 3), LEAST_PHASE_DEG));
-        if (loop->gain_up < LEAST_GAIN_UP)
-            fg_warn(a->findings, "gain-margin",
-                    fg_arena_text(a->arena,
-                                  "The loop at %s becomes unstable when its gain grows by a factor "
-                                  "%s (common practice: %g or more); weigh this input more in R.",
-                                  input, fg_words_number(a->arena, loop->gain_up, 3), LEAST_GAIN_UP));
-        /* a low margin in phase or gain says the same in words that more people know */
-        else if (loop->peak_sensitivity > MOST_SENSITIVITY && !(loop->phase_deg < LEAST_PHASE_DEG))
-            fg_warn(a->findings, "peak-sensitivity",
-                    fg_arena_text(a->arena,
-                                  "The loop at %s has a peak sensitivity of %s (common practice: at "
-                                  "most %g): it is touchy about errors of the model near %s.",
-                                  input, fg_words_number(a->arena, loop->peak_sensitivity, 3),
-                                  MOST_SENSITIVITY, fg_words_number(a->arena, loop->peak_frequency, 3)));
+        bool small_phase = loop->phase_deg < LEAST_PHASE_DEG, small_gain = loop->gain_up < LEAST_GAIN_UP;
+        if (small_phase && (phases++ == 0 || loop->phase_deg < phase->phase_deg))
+            phase = loop;
+        if (small_gain && (gains++ == 0 || loop->gain_up < gain->gain_up))
+            gain = loop;
+        /* a small margin in phase or gain says the same in words that more people know */
+        if (!small_phase && !small_gain && loop->peak_sensitivity > MOST_SENSITIVITY &&
+            (peaks++ == 0 || loop->peak_sensitivity > peak->peak_sensitivity))
+            peak = loop;
     }
+    if (phase)
+        fg_warn(a->findings, "phase-margin",
+                fg_arena_text(
+                    a->arena,
+                    "The loop at %s has a phase margin of only %s degrees (common practice: %g or more)%s. "
+                    "Delays that the model leaves out may make it unstable. A larger weight in R for "
+                    "this input usually helps.",
+                    a->problem->inputs[phase->input].name, fg_words_number(a->arena, phase->phase_deg, 3),
+                    LEAST_PHASE_DEG, others(a, phases, "below")));
+    if (gain)
+        fg_warn(a->findings, "gain-margin",
+                fg_arena_text(a->arena,
+                              "The loop at %s becomes unstable when its gain grows by a factor %s (common "
+                              "practice: %g or more)%s. A larger weight in R for this input usually helps.",
+                              a->problem->inputs[gain->input].name,
+                              fg_words_number(a->arena, gain->gain_up, 3), LEAST_GAIN_UP,
+                              others(a, gains, "below")));
+    if (peak)
+        fg_warn(a->findings, "peak-sensitivity",
+                fg_arena_text(
+                    a->arena,
+                    "The loop at %s has a peak sensitivity of %s (common practice: at most %g)%s: it is "
+                    "touchy about errors of the model near %s rad per %s.",
+                    a->problem->inputs[peak->input].name,
+                    fg_words_number(a->arena, peak->peak_sensitivity, 3), MOST_SENSITIVITY,
+                    others(a, peaks, "above"), fg_words_number(a->arena, peak->peak_frequency, 3),
+                    a->model.law.discrete      ? "step"
+                    : a->problem->time_unit[0] ? a->problem->time_unit
+                                               : "time unit"));
 }
 
 static void warn_search(struct fg_assembly *a)
@@ -245,6 +275,26 @@ static void warn_search(struct fg_assembly *a)
                               "distinct minima seen, about %s expected): a better gain may exist. "
                               "Raise --starts.",
                               s->distinct, fg_words_number(a->arena, s->expected_minima, 3)));
+}
+
+/* J is zero to rounding when it is this part of what the weights and disturbances could make it. */
+static const double ZERO_COST = 1e-13;
+
+static void warn_zero(struct fg_assembly *a)
+{
+    const struct fg_findings *f = a->findings;
+    double fastest = a->model.law.discrete ? 1 : a->benchmark.fastest, seen = 0, reached = 0;
+    for (int i = 0; i < a->problem->n; i++) {
+        seen = fmax(seen, FG_AT(a->problem->Q, i, i));
+        reached = fmax(reached, FG_AT(a->problem->W, i, i));
+    }
+    if (!f->has_gain || !f->stable || !(reached > 0) ||
+        !(fabs(f->cost) <= ZERO_COST * seen * reached / fastest))
+        return;
+    fg_warn(
+        a->findings, "zero-cost",
+        "The cost is zero but for rounding: no disturbance reaches anything that the weights see, so nothing "
+        "tells good gains from bad ones. Check Q and the disturbance.");
 }
 
 static void warn_disturbance(struct fg_assembly *a)
@@ -288,4 +338,5 @@ void fg_warnings_fill(struct fg_assembly *a)
     warn_unseen(a);
     warn_hidden(a);
     warn_disturbance(a);
+    warn_zero(a);
 }

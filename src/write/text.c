@@ -12,7 +12,7 @@
 enum {
     NARROWEST = 40,
     FEW_POLES = 6, /* lines of poles without --verbose */
-    POLE = 23,     /* columns of the table of poles */
+    POLE = 28,     /* columns of the table of poles */
     DAMPING = 8,
     FALL = 15
 };
@@ -221,7 +221,8 @@ static void put_search(const struct fg_page *page, const struct fg_findings *f, 
              f->search.distinct == 1 ? "minimum" : "minima", f->search.evaluations,
              f->search.rule_satisfied ? "; stopping rule met" : "");
     fg_put_wrapped(page, FG_PLAIN, "  ", line);
-    if (!isnan(f->search.residual)) {
+    bool at_minimum = f->outcome != FLATGAIN_BOUNDARY && f->outcome != FLATGAIN_UNBOUNDED;
+    if (!isnan(f->search.residual) && at_minimum) {
         snprintf(line, sizeof line, "residual gradient %s, smallest curvature %s, relative to the cost",
                  fg_text_number(f->search.residual, 2, false, number),
                  fg_text_number(f->search.smallest_curvature, 2, false, other));

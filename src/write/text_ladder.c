@@ -73,7 +73,7 @@ void fg_text_ladder(const struct fg_page *page, const struct fg_findings *f, boo
     struct scale scale = scale_of(page, f);
     bool own;
     fg_put_heading(page, "Ladder of costs",
-                   f->problem->reading == FG_START ? "J from a random start, summed over time"
+                   f->problem->reading == FG_START ? "J of a random start, over all time"
                                                    : "J, the average of x'Qx + 2x'Nu + u'Ru");
     fg_put_left(page, FG_FAINT, "", LABEL);
     fg_put_right(page, FG_FAINT, "cost", COST);
