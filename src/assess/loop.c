@@ -132,6 +132,18 @@ static bool find_poles(struct fg_loop *loop, struct fg_matrix A, struct fg_arena
     return true;
 }
 
+static void fill_rows(struct fg_loop *loop)
+{
+    size_t n = (size_t)loop->n, m = (size_t)loop->m;
+    for (size_t i = 0; i < n; i++) {
+        double *row = loop->rows + i * (n + m);
+        for (size_t j = 0; j < n; j++)
+            row[j] = -loop->A[i + j * n];
+        for (size_t j = 0; j < m; j++)
+            row[n + j] = loop->B[i + j * n];
+    }
+}
+
 flatgain_status fg_loop_build(const struct fg_plant *plant, struct fg_matrix K, struct fg_arena *arena,
                               struct fg_loop *loop, flatgain_error *error)
 {
@@ -150,6 +162,7 @@ flatgain_status fg_loop_build(const struct fg_plant *plant, struct fg_matrix K, 
                              .D = D.at,
                              .re = fg_arena_doubles(arena, (size_t)n),
                              .im = fg_arena_doubles(arena, (size_t)n),
+                             .rows = fg_arena_doubles(arena, (size_t)n * (size_t)(n + m)),
                              .solve = fg_arena_doubles(arena, 2 * (size_t)n * (size_t)(n + m))};
     bool good = !scratch.failed && !arena->failed && well_posed(K, plant->D, E, F, &scratch);
     if (good) {
@@ -170,6 +183,8 @@ flatgain_status fg_loop_build(const struct fg_plant *plant, struct fg_matrix K, 
             balance(A, B, C, scale);
     }
     good = good && fg_all_finite((size_t)n * (size_t)n, A.at) && to_hessenberg(A, B, C, &scratch);
+    if (good)
+        fill_rows(loop);
     bool memory = scratch.failed || arena->failed;
     fg_arena_release(&scratch);
     if (memory)
@@ -178,9 +193,9 @@ flatgain_status fg_loop_build(const struct fg_plant *plant, struct fg_matrix K, 
                 : fg_fail(error, FLATGAIN_NUMERICAL, "the closed loop is ill posed or cannot be computed");
 }
 
-/* Row r of the complex pair (re, im): row_k1 -= factor * row_k from column `from` on. */
-static void eliminate(int columns, int from, double fr, double fi, const double *ar, const double *ai,
-                      double *br, double *bi)
+/* b -= f a for complex rows, from column `from` on. */
+static void eliminate(int columns, int from, double fr, double fi, const double *restrict ar,
+                      const double *restrict ai, double *restrict br, double *restrict bi)
 {
     for (int j = from; j < columns; j++) {
         br[j] -= fr * ar[j] - fi * ai[j];
@@ -202,12 +217,7 @@ void fg_loop_evaluate(const struct fg_loop *loop, double w, double complex *T, d
     if (isinf(w))
         return;
     memset(im, 0, (size_t)n * row * sizeof(double));
-    for (int j = 0; j < n; j++)
-        for (int i = 0; i < n; i++)
-            re[(size_t)i * row + (size_t)j] = -loop->A[(size_t)i + (size_t)j * (size_t)n];
-    for (int j = 0; j < m; j++)
-        for (int i = 0; i < n; i++)
-            re[(size_t)i * row + (size_t)(n + j)] = loop->B[(size_t)i + (size_t)j * (size_t)n];
+    memcpy(re, loop->rows, (size_t)n * row * sizeof(double));
     for (int i = 0; i < n; i++)
         im[(size_t)i * (row + 1)] += w;
     for (int k = 0; k + 1 < n; k++) {

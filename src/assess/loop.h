@@ -22,6 +22,7 @@ struct fg_loop {
     double *re, *im;         /* n poles, in the s-plane */
     double slowest, fastest; /* smallest and largest |pole| */
     bool stable;
+    double *rows;  /* n x (n + m) row-major: [-A B], what every evaluation starts from */
     double *solve; /* scratch of fg_loop_evaluate */
 };
 

@@ -142,6 +142,50 @@ static bool evaluate_all(struct probe *probe, const struct fg_frequencies *list,
     return true;
 }
 
+/* Points of all loops at the shared frequencies: loop i at [i * count], all inputs at [m * count]. One
+ * elimination serves them all. */
+static bool evaluate_shared(struct probe *probe, const struct fg_frequencies *list, struct fg_arena *scratch,
+                            struct points *shared)
+{
+    int m = probe->loop->m;
+    size_t count = (size_t)list->count + 2;
+    shared->count = (int)count;
+    shared->at = fg_arena_get(scratch, count * ((size_t)m + 1) * sizeof *shared->at);
+    if (list->failed || !shared->at)
+        return false;
+    for (size_t k = 0; k < count; k++) {
+        double w = k == 0 ? 0 : k == count - 1 ? INFINITY : list->at[k - 1];
+        fg_loop_evaluate(probe->loop, w, probe->T, probe->noise);
+        for (int i = 0; i < m; i++) {
+            double complex t = probe->T[i + i * m];
+            shared->at[(size_t)i * count + k] = (struct point){w, t, probe->noise[i], cabs(1 - t)};
+        }
+        shared->at[(size_t)m * count + k] = (struct point){.w = w, .peak = largest_singular_value(probe)};
+    }
+    return true;
+}
+
+static int by_frequency(const void *a, const void *b)
+{
+    double x = ((const struct point *)a)->w, y = ((const struct point *)b)->w;
+    return (x > y) - (x < y);
+}
+
+/* The shared points of one loop together with its own. */
+static bool merge_points(const struct points *shared, int i, const struct points *own,
+                         struct fg_arena *scratch, struct points *points)
+{
+    points->count = shared->count + own->count;
+    points->at = fg_arena_get(scratch, (size_t)points->count * sizeof *points->at);
+    if (!points->at)
+        return false;
+    memcpy(points->at, shared->at + (size_t)i * (size_t)shared->count,
+           (size_t)shared->count * sizeof *points->at);
+    memcpy(points->at + shared->count, own->at, (size_t)own->count * sizeof *points->at);
+    qsort(points->at, (size_t)points->count, sizeof *points->at, by_frequency);
+    return true;
+}
+
 static double imaginary_part(const struct point *point)
 {
     return cimag(point->t);
@@ -230,7 +274,7 @@ static void gain_and_phase(struct probe *probe, const struct points *points, str
             note_gain(loop, &a, margin);
         if (touches(probe, above_half, &a))
             note_phase(loop, &a, margin);
-        if (k + 1 == points->count || isinf(points->at[k + 1].w))
+        if (k + 1 == points->count || isinf(points->at[k + 1].w) || points->at[k + 1].w == a.w)
             continue;
         struct point b = points->at[k + 1];
         if (imaginary_part(&a) * imaginary_part(&b) < 0) {
@@ -324,22 +368,21 @@ static const struct fg_loop_margin NO_LOOP = {.gain_down = 0,
                                               .peak_sensitivity = 1,
                                               .peak_frequency = NAN};
 
-static flatgain_status one_loop(struct probe *probe, const struct fg_frequencies *base,
+static flatgain_status one_loop(struct probe *probe, const struct points *shared,
                                 struct fg_loop_margin *margin)
 {
     struct fg_arena scratch = {0};
     struct fg_frequencies list = {0};
-    struct points points = {0};
+    struct points own = {0}, points = {0};
     flatgain_status status = FLATGAIN_NO_MEMORY;
-    for (int k = 0; k < base->count; k++)
-        fg_frequencies_add(&list, base->at[k]);
     if (probe->loop->n <= LARGE) {
         fg_crossings_real(probe->loop, probe->i, &list);
         fg_crossings_unit(probe->loop, probe->i, &list);
     }
     fg_frequencies_sort(&list);
     add_midpoints(&list);
-    if (evaluate_all(probe, &list, &scratch, &points)) {
+    if (evaluate_all(probe, &list, &scratch, &own) &&
+        merge_points(shared, probe->i, &own, &scratch, &points)) {
         gain_and_phase(probe, &points, margin);
         status = find_peak(probe, &points, &margin->peak_sensitivity, &margin->peak_frequency);
     }
@@ -369,7 +412,7 @@ flatgain_status fg_margins(const struct fg_plant *plant, struct fg_matrix K, str
     struct fg_arena scratch = {0};
     struct fg_loop loop;
     struct probe probe;
-    struct points points = {0};
+    struct points shared = {0};
     struct fg_frequencies base = {0};
     *margins = (struct fg_margins){.peak_sensitivity = NAN, .peak_frequency = NAN};
     margins->loop = fg_arena_get(arena, (size_t)plant->m * sizeof *margins->loop);
@@ -385,23 +428,23 @@ flatgain_status fg_margins(const struct fg_plant *plant, struct fg_matrix K, str
     if (memory) {
         add_pole_frequencies(&loop, &base);
         fg_frequencies_sort(&base);
+        add_midpoints(&base);
+        memory = evaluate_shared(&probe, &base, &scratch, &shared);
     }
     for (int i = 0; memory && i < plant->m; i++) {
         margins->loop[i] = NO_LOOP;
         margins->loop[i].input = i;
         probe.i = i;
         if (!row_is_zero(K, i))
-            memory = one_loop(&probe, &base, &margins->loop[i]) == FLATGAIN_OK;
+            memory = one_loop(&probe, &shared, &margins->loop[i]) == FLATGAIN_OK;
     }
     if (memory && plant->m == 1) {
         margins->peak_sensitivity = margins->loop[0].peak_sensitivity;
         margins->peak_frequency = margins->loop[0].peak_frequency;
     } else if (memory) {
+        struct points all = {shared.count, shared.at + (size_t)plant->m * (size_t)shared.count};
         probe.i = -1;
-        add_midpoints(&base);
-        memory =
-            evaluate_all(&probe, &base, &scratch, &points) &&
-            find_peak(&probe, &points, &margins->peak_sensitivity, &margins->peak_frequency) == FLATGAIN_OK;
+        memory = find_peak(&probe, &all, &margins->peak_sensitivity, &margins->peak_frequency) == FLATGAIN_OK;
     }
     fg_frequencies_free(&base);
     fg_arena_release(&scratch);

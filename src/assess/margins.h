@@ -6,7 +6,7 @@
 #include "plant/model.h"
 
 struct fg_margins {
-    struct fg_loop_margin *loop; /* m */
+    struct fg_loop_margin *loop;             /* m */
     double peak_sensitivity, peak_frequency; /* largest singular value of (I + K G)^-1, G = plant */
 };
 
