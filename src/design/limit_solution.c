@@ -6,7 +6,6 @@
 #include "design/order_reduction.h"
 #include "linalg/factor.h"
 #include "linalg/lapack.h"
-#include "linalg/riccati_parts.h"
 
 static struct fg_matrix columns(struct fg_matrix a, int first, int count)
 {
@@ -21,45 +20,6 @@ static struct fg_matrix block(struct fg_arena *arena, struct fg_matrix a, int ro
         for (int i = 0; i < rows; i++)
             FG_AT(c, i, j) = FG_AT(a, row + i, col + j);
     return c;
-}
-
-void fg_limit_scaling(struct fg_matrix A, struct fg_matrix B, struct fg_matrix Q, double *d,
-                      struct fg_arena *scratch)
-{
-    enum { ROUNDS = 8 };
-    int n = A.rows;
-    struct fg_matrix unit = fg_matrix_copy(scratch, B), G = fg_matrix_new(scratch, n, n);
-    struct fg_matrix weight = fg_matrix_copy(scratch, Q);
-    double *before = fg_arena_doubles(scratch, (size_t)n);
-    if (scratch->failed)
-        return;
-    for (int i = 0; i < n; i++)
-        d[i] = 1;
-    for (int round = 0; round < ROUNDS; round++) {
-        /* in the present scale: columns of B of the size of A, weights of the size of A */
-        double size = 0, largest = 0;
-        for (int j = 0; j < n; j++)
-            for (int i = 0; i < n; i++) {
-                double a = FG_AT(A, i, j) * d[i] / d[j];
-                size += a * a;
-                largest = fmax(largest, fabs(FG_AT(Q, i, j)) / d[i] / d[j]);
-            }
-        size = size > 0 ? sqrt(size / n) : 1;
-        for (int j = 0; j < B.cols; j++) {
-            double length = 0;
-            for (int i = 0; i < n; i++)
-                length += FG_AT(B, i, j) * FG_AT(B, i, j) * d[i] * d[i];
-            for (int i = 0; i < n; i++)
-                FG_AT(unit, i, j) = length > 0 ? FG_AT(B, i, j) * sqrt(size / length) : 0;
-        }
-        fg_multiply('N', 'T', 1, unit, unit, 0, G);
-        for (size_t i = 0; i < (size_t)n * n; i++)
-            weight.at[i] = largest > 0 ? Q.at[i] * (size / largest) : 0;
-        memcpy(before, d, (size_t)n * sizeof *d);
-        fg_riccati_balance(A, G, weight, d);
-        if (memcmp(before, d, (size_t)n * sizeof *d) == 0)
-            break;
-    }
 }
 
 /* [Hx Hu] with [Hx Hu]'[Hx Hu] = [Q N; N' R], in states scaled by d. */

@@ -85,6 +85,7 @@ static bool split_inputs(struct fg_stage *s, struct fg_level *level, struct fg_a
     int n = s->A.rows, m = s->B.cols, rows = s->Hx.rows, rank = 0;
     double *e = fg_arena_doubles(&s->arena, (size_t)m), *sv;
     struct fg_matrix scaled = fg_matrix_new(&s->arena, rows, m), U, Vt;
+    double noise = 4 * DBL_EPSILON; /* relative, of the null space of Hu */
     if (s->arena.failed)
         return false;
     for (int j = 0; j < m; j++) {
@@ -99,11 +100,13 @@ static bool split_inputs(struct fg_stage *s, struct fg_level *level, struct fg_a
         e[j] = weight > 0 ? weight : reach > 0 ? reach : 1;
         for (int i = 0; i < rows; i++)
             FG_AT(scaled, i, j) = weight > 0 ? h[i] / e[j] : 0;
+        if (weight > 0)
+            noise = fmax(noise, s->floor_Hu / weight);
     }
     if (!singular_values(&s->arena, scaled, &U, &sv, &Vt))
         return false;
     for (int k = 0; k < U.cols; k++)
-        rank += sv[k] > FG_RANK_TOLERANCE;
+        rank += sv[k] > fmax(FG_RANK_TOLERANCE, noise);
     level->n = n;
     level->m = m;
     level->m1 = rank;
@@ -124,20 +127,26 @@ static bool split_inputs(struct fg_stage *s, struct fg_level *level, struct fg_a
     }
     fg_multiply('N', 'N', 1, s->B, split->Z, 0, split->BZ);
     /* A combination of columns that cancels leaves rounding: measured against what was added. */
+    split->noise = 4 * DBL_EPSILON;
     for (int k = 0; k < level->m0; k++) {
-        double added = 0;
-        for (int j = 0; j < m; j++)
+        double added = 0, rounding = 0;
+        for (int j = 0; j < m; j++) {
             added += fabs(FG_AT(split->Z, j, k)) * norm((size_t)n, s->B.at + (size_t)j * n);
-        double *b = split->BZ.at + (size_t)k * n;
-        if (norm((size_t)n, b) <= FG_RANK_TOLERANCE * added)
+            rounding += fabs(FG_AT(split->Z, j, k)) * s->floor_B;
+        }
+        rounding += noise * added;
+        double *b = split->BZ.at + (size_t)k * n, length = norm((size_t)n, b);
+        if (length <= FG_RANK_TOLERANCE * added + rounding)
             memset(b, 0, (size_t)n * sizeof *b);
+        else
+            split->noise = fmax(split->noise, rounding / length);
     }
     return true;
 }
 
 /* Reflectors whose first r columns span B0: r is its rank with columns of unit length. */
 static bool span_inputs(struct fg_stage *s, struct fg_level *level, struct fg_arena *keep,
-                        struct fg_matrix B0)
+                        struct fg_matrix B0, double noise)
 {
     int n = level->n, info = 0, lwork = 64 * n + 64;
     struct fg_matrix unit = fg_matrix_copy(&s->arena, B0), U, Vt;
@@ -153,7 +162,8 @@ static bool span_inputs(struct fg_stage *s, struct fg_level *level, struct fg_ar
         return false;
     level->r = 0;
     for (int k = 0; k < U.cols; k++)
-        level->r += sv[k] > FG_RANK_TOLERANCE;
+        level->r += sv[k] > fmax(FG_RANK_TOLERANCE, noise);
+    level->turn = level->r > 0 ? 16 * DBL_EPSILON * sqrt(n) + noise / sv[level->r - 1] : 0;
     level->reflectors = block(keep, U, 0, 0, n, level->r);
     level->tau = fg_arena_doubles(keep, (size_t)level->r);
     if (keep->failed)
@@ -166,7 +176,7 @@ static bool span_inputs(struct fg_stage *s, struct fg_level *level, struct fg_ar
 bool fg_stage_split(struct fg_stage *s, struct fg_level *level, struct fg_arena *keep, struct fg_split *split)
 {
     return split_inputs(s, level, keep, split) &&
-           span_inputs(s, level, keep, columns(split->BZ, 0, level->m0));
+           span_inputs(s, level, keep, columns(split->BZ, 0, level->m0), split->noise);
 }
 
 bool fg_stage_reduce(bool discrete, struct fg_stage *s, struct fg_level *level, struct fg_arena *keep,
@@ -216,8 +226,8 @@ bool fg_stage_reduce(bool discrete, struct fg_stage *s, struct fg_level *level, 
     } else {
         memcpy(NB.at, low.at, (size_t)n2 * m1 * sizeof(double));
     }
-    next->floor_B = fmax(16 * DBL_EPSILON * sqrt(n) * large_A, 0);
-    next->floor_Hu = fmax(16 * DBL_EPSILON * sqrt(n) * large_H, 0);
+    next->floor_B = fmax(level->turn * large_A, s->floor_B);
+    next->floor_Hu = fmax(level->turn * large_H, s->floor_Hu);
     return true;
 }
 

@@ -20,6 +20,7 @@ struct fg_level {
     int n, m, r, m0, m1;
     struct fg_matrix reflectors; /* n x r, and tau */
     double *tau;
+    double turn;           /* by how much T1 may be off for rounding */
     struct fg_matrix Zi;   /* m x m: [u0; u1] = Zi u */
     struct fg_matrix Ad;   /* discrete: n x n */
     struct fg_matrix Hd;   /* discrete: rows x n */
@@ -37,6 +38,7 @@ struct fg_stage_answer {
 struct fg_split {
     struct fg_matrix Z, BZ; /* m x m, n x m: [u0; u1] = Z^-1 u, B Z = [B0 B1] */
     struct fg_matrix U1;    /* rows x m1, orthonormal, Hu Z = [0 U1] */
+    double noise;           /* relative rounding of the columns of B0 */
 };
 
 /* Splits the inputs and finds the rank r of B0; r = 0: nothing is left to reduce. `keep` holds what the way
