@@ -121,14 +121,16 @@ static flatgain_status sizes(const struct fg_check *check)
         if (status != FLATGAIN_OK)
             return status;
         if (!fg_all_finite((size_t)all[i].matrix->rows * (size_t)all[i].matrix->cols, all[i].matrix->at))
-            return fg_check_fail(check, all[i].key, "%s has an entry that is not a finite number",
+            return fg_check_fail(check, all[i].key,
+                                 "%s has an entry that is not a finite number; expected finite ones",
                                  all[i].what);
     }
     if (!problem->has_today)
         return problem->arena.failed ? fg_no_memory(check->error) : FLATGAIN_OK;
     flatgain_status status = fg_check_size(check, "gain.today", "today", problem->today, 'm', 'p');
     if (status == FLATGAIN_OK && !fg_all_finite((size_t)problem->m * (size_t)problem->p, problem->today.at))
-        return fg_check_fail(check, "gain.today", "today has an entry that is not a finite number");
+        return fg_check_fail(check, "gain.today",
+                             "today has an entry that is not a finite number; expected finite ones");
     return status;
 }
 

@@ -72,8 +72,10 @@ static flatgain_status take_pattern(const struct fg_check *check, const flatgain
     for (size_t e = 0; status == FLATGAIN_OK && given->fixed && e < count; e++) {
         double value = given->fixed[e];
         if (isinf(value))
-            status = fg_check_fail(check, "gain.pattern", "fixed gain in row %zu, column %zu is not finite",
-                                   e / (size_t)given->outputs + 1, e % (size_t)given->outputs + 1);
+            status =
+                fg_check_fail(check, "gain.pattern",
+                              "fixed gain in row %zu, column %zu is not finite; expected a number or NAN",
+                              e / (size_t)given->outputs + 1, e % (size_t)given->outputs + 1);
         entries[e].kind = isnan(value) ? FG_ENTRY_FREE : FG_ENTRY_FIXED;
         entries[e].value = value;
     }
