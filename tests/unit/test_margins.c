@@ -7,6 +7,7 @@
 #include <string.h>
 
 #include "assess/margins.h"
+#include "cases.h"
 #include "linalg/lapack.h"
 #include "plants.h"
 
@@ -101,8 +102,7 @@ START_TEST(integrator_with_lag)
 {
     /* L = k / (s (tau s + 1)): w^2 = (sqrt(1 + 4 k^2 tau^2) - 1) / (2 tau^2), phase 90 - atan(w tau).
      * S = s (tau s + 1) / (tau s^2 + s + k): with x = w^2, q = k / tau, r = 1 / tau^2
-     * |S|^2 = x (x + r) / ((q - x)^2 + r x), largest where (2x + r)((q-x)^2 + r x) = x (x + r)(2x - 2q + r),
-     * i.e. -2 q x^2 + (2 q^2 - 2 q r + ...) solved below by bisection of the derivative. */
+     * |S|^2 = x (x + r) / ((q - x)^2 + r x); its largest value by bisection of the derivative's sign. */
     double tau = 0.8, k = 3, a[] = {0, 1, 0, -1 / tau}, b[] = {0, k / tau}, c[] = {1, 0};
     struct fg_plant plant = siso(false, 2, a, b, c, 0);
     struct fg_loop_margin loop = loop_of(&plant, 1);
@@ -495,6 +495,55 @@ START_TEST(peaks_against_slicot)
 }
 END_TEST
 
+/* The open models at their best-known gains, badly scaled ones (FS, CM1) included: peak of all inputs as
+ * SLICOT finds it, limits of the gain factors where the eigenvalues cross. */
+START_TEST(open_models)
+{
+    char **names = case_names();
+    int tried = 0;
+    for (int c = 0; names[c]; c++) {
+        struct case_data data;
+        int rows, cols;
+        if (!case_load(names[c], &data))
+            continue;
+        const cJSON *known = cJSON_GetObjectItem(data.root, "known");
+        double *gain = case_matrix(cJSON_GetObjectItem(known, "best_K"), &rows, &cols);
+        if (gain && data.n <= 20) {
+            struct fg_plant plant = empty_plant(&arena, data.discrete, data.n, data.m, data.p);
+            plant.A = fg_matrix_from_rows(&arena, data.n, data.n, data.A);
+            plant.B = fg_matrix_from_rows(&arena, data.n, data.m, data.B);
+            plant.C = fg_matrix_from_rows(&arena, data.p, data.n, data.C);
+            struct fg_matrix K = fg_matrix_from_rows(&arena, data.m, data.p, gain);
+            struct fg_matrix Acl = fg_matrix_copy(&arena, plant.A),
+                             KC = fg_matrix_new(&arena, data.m, data.n);
+            fg_multiply('N', 'N', 1, K, plant.C, 0, KC); /* none of these models has a feedthrough */
+            fg_multiply('N', 'N', -1, plant.B, KC, 1, Acl);
+            struct fg_margins margins = margins_of(&plant, K);
+            double peak = slicot_sensitivity(&plant, K, Acl, -1);
+            ck_assert_msg(fabs(margins.peak_sensitivity - peak) <= 1e-6 * peak, "%s: %.10g, SLICOT %.10g",
+                          names[c], margins.peak_sensitivity, peak);
+            for (int i = 0; i < data.m; i++) {
+                double up = margins.loop[i].gain_up, down = margins.loop[i].gain_down;
+                double top = fmin(up, 1e5);
+                for (int k = 1; k < 40; k++) {
+                    ck_assert_msg(measure_at(&plant, K, i, exp(log(top) * k / 40)) < 0, "%s up", names[c]);
+                    ck_assert_msg(measure_at(&plant, K, i, 1 - (1 - down) * k / 40) < 0, "%s down", names[c]);
+                }
+                ck_assert_msg(isinf(up) || measure_at(&plant, K, i, up * (1 + 1e-4)) > 0, "%s up", names[c]);
+                ck_assert_msg(down == 0 || measure_at(&plant, K, i, down * (1 - 1e-4)) > 0, "%s down",
+                              names[c]);
+            }
+            tried++;
+        }
+        free(gain);
+        case_free(&data);
+        release();
+    }
+    case_names_free(names);
+    ck_assert_int_ge(tried, 35);
+}
+END_TEST
+
 /* A resonance of damping zeta = 1e-7 next to a slow pole: the peak is 1e-7 wide and no grid would see it.
  * L = k / (s^2 + 2 zeta s + 1), S = (s^2 + 2 zeta s + 1) / (s^2 + 2 zeta s + 1 + k), k = 0.5:
  * |S|^2 = ((1 - x)^2 + 4 z^2 x) / ((1.5 - x)^2 + 4 z^2 x), x = w^2, at x = 1.5 about 0.5 / (2 z sqrt 1.5) */
@@ -548,8 +597,8 @@ START_TEST(units_of_states_do_not_matter)
 }
 END_TEST
 
-/* Stiff loop: L = 25e? as in published_third_order with a pole at -1e7 and one at -1e-6 cancelled by a zero
- * pair far from the crossing: gain limit from the Routh table changes by 1e-6 only. */
+/* published_third_order with a fast lag and a nearly invisible slow mode: poles from 1e-6 to 1e7, while the
+ * limits change by about 1e-6 only. */
 START_TEST(stiff_loop)
 {
     /* states: third-order plant, then a fast lag 1 / (1e-7 s + 1) on its output, and a slow mode -1e-6 with
@@ -565,8 +614,8 @@ START_TEST(stiff_loop)
 }
 END_TEST
 
-/* Past 200 states the adaptive grid takes over: 105 copies of one lightly damped loop with spread
- * frequencies; SLICOT gives the peak. */
+/* Past 200 states the adaptive grid takes over: 105 lightly damped modes at spread frequencies; SLICOT gives
+ * the peak. */
 START_TEST(many_states)
 {
     int n = 210;
@@ -577,7 +626,7 @@ START_TEST(many_states)
         FG_AT(plant.A, k, k + 1) = w;
         FG_AT(plant.A, k + 1, k) = -w;
         FG_AT(plant.B, k + 1, 0) = 0.1 * w * (1 + 0.3 * random_uniform());
-        FG_AT(plant.C, 0, k + 1) = 1; /* speed feedback: stable for every gain */
+        FG_AT(plant.C, 0, k + 1) = 1; /* speed feedback */
     }
     struct fg_matrix K = fg_matrix_new(&arena, 1, 1), Acl = fg_matrix_copy(&arena, plant.A);
     K.at[0] = -0.15; /* positive feedback, inside the limit */
@@ -605,6 +654,7 @@ int main(void)
     tcase_add_test(tests, gain_limits_by_scanning);
     tcase_add_test(tests, phase_and_peaks_by_grid);
     tcase_add_test(tests, peaks_against_slicot);
+    tcase_add_test(tests, open_models);
     tcase_add_test(tests, narrow_resonance);
     tcase_add_test(tests, units_of_states_do_not_matter);
     tcase_add_test(tests, stiff_loop);
