@@ -20,18 +20,26 @@ static double power_of_two(double value)
 void fg_riccati_balance(struct fg_matrix A, struct fg_matrix G, struct fg_matrix Q, double *d)
 {
     enum { SWEEPS = 100 };
+    /* Entries of rounding size must not drive the scale: the diagonal counts on both sides (as in LAPACK's
+     * dgebal since 3.5), and so does this part of the largest entry. */
+    const double negligible = 1e-10;
     int n = A.rows;
     for (int sweep = 0; sweep < SWEEPS; sweep++) {
         bool moved = false;
+        double largest = 0;
+        for (int j = 0; j < n; j++)
+            for (int i = 0; i < n; i++)
+                largest = fmax(largest, fabs(FG_AT(A, i, j)) * d[i] / d[j]);
         for (int i = 0; i < n; i++) {
-            double row = 0, column = 0;
+            double least = negligible * largest, row = 0, column = 0;
             for (int j = 0; j < n; j++) {
-                double up = j == i ? 0 : FG_AT(A, i, j) * d[i] / d[j], gain = FG_AT(G, i, j) * d[i] * d[j];
-                double down = j == i ? 0 : FG_AT(A, j, i) * d[j] / d[i],
-                       weight = FG_AT(Q, i, j) / (d[i] * d[j]);
+                double up = FG_AT(A, i, j) * d[i] / d[j], gain = FG_AT(G, i, j) * d[i] * d[j];
+                double down = FG_AT(A, j, i) * d[j] / d[i], weight = FG_AT(Q, i, j) / (d[i] * d[j]);
                 row += up * up + gain * gain;
                 column += down * down + weight * weight;
             }
+            row += row > 0 ? least * least : 0;
+            column += column > 0 ? least * least : 0;
             if (!(row > 0) || !(column > 0) || !isfinite(row) || !isfinite(column))
                 continue;
             /* The exact factor is (column / row)^(1/4) when the terms linear in d rule and half that in
@@ -206,7 +214,7 @@ bool fg_riccati_refine(bool discrete, struct fg_arena *arena, struct fg_riccati_
     struct fg_matrix Acl = fg_matrix_new(arena, n, n), next = fg_matrix_new(arena, n, n);
     if (arena->failed)
         return false;
-    double last = INFINITY;
+    double last = INFINITY, last_absolute = INFINITY;
     for (int step = 0; step < STEPS; step++) {
         if (!gain(discrete, p, S, SB, M, L))
             return false;
@@ -225,13 +233,15 @@ bool fg_riccati_refine(bool discrete, struct fg_arena *arena, struct fg_riccati_
             arena->failed = arena->failed || memory;
             return false;
         }
-        double moved = relative_change(S, next);
-        if (step > 0 && moved >= 0.9 * last && (moved < settled || absolute_change(S, next) < zero))
+        double moved = relative_change(S, next), absolute = absolute_change(S, next);
+        bool stands = step > 0 && moved >= 0.9 * last;
+        if (stands && (moved < settled || (absolute < zero && absolute >= 0.9 * last_absolute)))
             return gain(discrete, p, S, SB, M, L);
         memcpy(S.at, next.at, (size_t)n * n * sizeof(double));
         if (moved <= enough)
             return gain(discrete, p, S, SB, M, L);
         last = moved;
+        last_absolute = absolute;
     }
     return false;
 }
