@@ -44,14 +44,15 @@ static bool pushes_outward(const struct fg_pattern *pattern, const double *theta
     return (theta[k] <= pattern->lower[k] && gradient[k] >= 0) || (theta[k] >= pattern->upper[k] && gradient[k] <= 0);
 }
 
+/* gradient: of log J */
 static double residual_of(const struct fg_local *l, const struct fg_pattern *pattern, const double *theta,
-                          const double *gradient, double J)
+                          const double *gradient)
 {
     double worst = 0;
     for (int k = 0; k < l->q; k++)
         if (!pushes_outward(pattern, theta, gradient, k))
             worst = fmax(worst, fabs(gradient[k]) * fmax(1, fabs(theta[k])));
-    return J > 0 ? worst / J : 0;
+    return worst;
 }
 
 /* Eigenvectors of the Hessian on the `count` free gains; false when LAPACK fails. */
@@ -188,9 +189,23 @@ static int curvature(struct fg_local *l, const struct fg_pattern *pattern, const
             l->free[count++] = k;
     if (!decompose(l, count))
         return -1;
-    answer->smallest = count && answer->J > 0 ? l->values[0] / answer->J : 0;
-    answer->largest = count && answer->J > 0 ? fmax(fabs(l->values[0]), fabs(l->values[count - 1])) / answer->J : 0;
+    answer->smallest = count ? l->values[0] : 0;
+    answer->largest = count ? fmax(fabs(l->values[0]), fabs(l->values[count - 1])) : 0;
     return l->q - count;
+}
+
+/* Gradient and Hessian of log J: the same minima, but where J blows up towards the stability boundary, like
+ * 1 / distance, a Newton step on log J doubles the distance and one on J only grows it by half. */
+static void log_derivatives(struct fg_local *l, struct fg_cost *cost, double J)
+{
+    int q = l->q;
+    fg_cost_gradient(cost, l->gradient);
+    fg_cost_hessian(cost, l->hessian);
+    for (int k = 0; k < q; k++)
+        l->gradient[k] /= J;
+    for (int j = 0; j < q; j++)
+        for (int k = 0; k < q; k++)
+            l->hessian[k + (size_t)j * q] = l->hessian[k + (size_t)j * q] / J - l->gradient[k] * l->gradient[j];
 }
 
 struct fg_local_answer fg_local_minimise(struct fg_local *l, struct fg_cost *cost, const struct fg_pattern *pattern,
@@ -207,18 +222,17 @@ struct fg_local_answer fg_local_minimise(struct fg_local *l, struct fg_cost *cos
     bool fresh = true;
     for (int iteration = 0;; iteration++) {
         if (fresh) {
-            fg_cost_gradient(cost, l->gradient);
-            fg_cost_hessian(cost, l->hessian);
-            answer.hessians++;
-            answer.residual = residual_of(l, pattern, theta, l->gradient, answer.J);
-            answer.at_bound = curvature(l, pattern, theta, &answer);
-            if (answer.at_bound < 0) {
-                answer.end = FG_LOCAL_STALLED;
-                return answer;
-            }
             if (answer.J <= limits->negligible) {
                 answer.end = FG_LOCAL_MINIMUM;
                 answer.residual = answer.smallest = answer.largest = 0;
+                return answer;
+            }
+            log_derivatives(l, cost, answer.J);
+            answer.hessians++;
+            answer.residual = residual_of(l, pattern, theta, l->gradient);
+            answer.at_bound = curvature(l, pattern, theta, &answer);
+            if (answer.at_bound < 0) {
+                answer.end = FG_LOCAL_STALLED;
                 return answer;
             }
             if (answer.residual <= TOLERANCE && answer.smallest >= -ACCEPTABLE) {
@@ -253,13 +267,15 @@ struct fg_local_answer fg_local_minimise(struct fg_local *l, struct fg_cost *cos
             l->trial[k] = fmin(fmax(theta[k] + l->step[k], pattern->lower[k]), pattern->upper[k]);
         double J = fg_cost_at(cost, l->trial);
         answer.evaluations++;
-        double gain = answer.J - J, ratio = isfinite(J) ? gain / expected : -1;
+        double gain = log(answer.J / J), ratio = isfinite(J) ? gain / expected : -1;
         bool accept = ratio > 1e-4;
-        if (isfinite(J) && expected < NOISE * answer.J) {
+        if (isfinite(J) && expected < NOISE) {
             /* J cannot judge any more: the gradient does */
             fg_cost_gradient(cost, l->trial_gradient);
-            double residual = residual_of(l, pattern, l->trial, l->trial_gradient, J);
-            accept = residual < 0.5 * answer.residual && fabs(gain) <= 10 * NOISE * answer.J;
+            for (int k = 0; k < q; k++)
+                l->trial_gradient[k] /= J;
+            double residual = residual_of(l, pattern, l->trial, l->trial_gradient);
+            accept = residual < 0.5 * answer.residual && fabs(gain) <= 10 * NOISE;
             if (!accept) {
                 fg_cost_at(cost, theta);
                 answer.end = answer.residual <= ACCEPTABLE ? FG_LOCAL_MINIMUM : FG_LOCAL_STALLED;

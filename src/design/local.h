@@ -1,4 +1,4 @@
-/* Local minimum of J over the free gains: trust-region Newton with the exact Hessian (the subproblem
+/* Local minimum of log J over the free gains: trust-region Newton with the exact Hessian (the subproblem
  * solved through the eigenvectors of the Hessian; More, Sorensen, SIAM J. Sci. Stat. Comput. 4 (1983)
  * 553), gains at a bound held there while the gradient pushes outward. Works in scaled parameters, where
  * 1 is a natural size (scaling.h). */
