@@ -214,7 +214,7 @@ bool fg_riccati_refine(bool discrete, struct fg_arena *arena, struct fg_riccati_
     struct fg_matrix Acl = fg_matrix_new(arena, n, n), next = fg_matrix_new(arena, n, n);
     if (arena->failed)
         return false;
-    double last = INFINITY, last_absolute = INFINITY;
+    double last = INFINITY, last_absolute = INFINITY; /* the smallest changes so far */
     for (int step = 0; step < STEPS; step++) {
         if (!gain(discrete, p, S, SB, M, L))
             return false;
@@ -240,8 +240,8 @@ bool fg_riccati_refine(bool discrete, struct fg_arena *arena, struct fg_riccati_
         memcpy(S.at, next.at, (size_t)n * n * sizeof(double));
         if (moved <= enough)
             return gain(discrete, p, S, SB, M, L);
-        last = moved;
-        last_absolute = absolute;
+        last = fmin(last, moved);
+        last_absolute = fmin(last_absolute, absolute);
     }
     return false;
 }
