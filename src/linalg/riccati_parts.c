@@ -205,8 +205,10 @@ bool fg_riccati_refine(bool discrete, struct fg_arena *arena, struct fg_riccati_
 {
     enum { STEPS = 60 };
     const double enough = 1e-15; /* relative change at which nothing more can be gained */
-    const double settled = 1e-5; /* a change that stops falling above this is not convergence ... */
-    /* ... unless S is nothing but rounding (its true value 0) beside what Q costs in one time constant */
+    const double settled = 1e-5; /* a relative change that stops falling above this is not convergence ... */
+    /* ... unless S is nothing but rounding (its true value 0) beside what Q costs in one time constant, or
+     * what still moves is rounding beside the largest entries of S */
+    const double nearly = 1e-2, beside = 1e-10;
     double zero = 1e-8 * fg_matrix_max_abs(p.Q) / (discrete ? 1 : fmax(fg_matrix_max_abs(p.A), 1e-300));
     int n = p.A.rows, m = p.B.cols;
     struct fg_matrix SB = fg_matrix_new(arena, n, m), M = fg_matrix_new(arena, m, m);
@@ -234,8 +236,10 @@ bool fg_riccati_refine(bool discrete, struct fg_arena *arena, struct fg_riccati_
             return false;
         }
         double moved = relative_change(S, next), absolute = absolute_change(S, next);
-        bool stands = step > 0 && moved >= 0.9 * last;
-        if (stands && (moved < settled || (absolute < zero && absolute >= 0.9 * last_absolute)))
+        bool stands = step > 0 && moved >= 0.9 * last,
+             stands_still = stands && absolute >= 0.9 * last_absolute;
+        bool rounding = absolute < zero || (moved < nearly && absolute < beside * fg_matrix_max_abs(next));
+        if ((stands && moved < settled) || (stands_still && rounding))
             return gain(discrete, p, S, SB, M, L);
         memcpy(S.at, next.at, (size_t)n * n * sizeof(double));
         if (moved <= enough)
