@@ -188,7 +188,7 @@ static void scale_pattern(const struct fg_pattern *pattern, struct fg_scaled *sc
 }
 
 flatgain_status fg_scale(const struct fg_plant *plant, const struct fg_pattern *pattern,
-                         const struct fg_benchmark *benchmark, double margin_limit, struct fg_arena *arena,
+                         const struct fg_benchmark *benchmark, struct fg_arena *arena,
                          struct fg_scaled *scaled, flatgain_error *error)
 {
     struct fg_arena scratch = {0};
@@ -200,7 +200,6 @@ flatgain_status fg_scale(const struct fg_plant *plant, const struct fg_pattern *
     scaled->rate = units.rate;
     /* the margin is a rate; in the discrete setting the fastest pole of the loop less 1 stands for it */
     scaled->margin = MARGIN * (plant->discrete ? fmin(1, or_one(units.fastest)) : 1);
-    scaled->margin = fmin(scaled->margin, margin_limit / units.rate);
     if (!arena->failed && !scratch.failed) {
         scale_plant(plant, &units, arena, &scaled->plant);
         scale_pattern(pattern, scaled, arena);

@@ -17,9 +17,9 @@ struct fg_scaled {
     struct fg_matrix L;        /* m x n LQR gain in natural units */
 };
 
-/* `margin_limit`: half the decay of the slowest mode no gain can move, in the user's units; INFINITY. */
+/* Memory of the result from `arena`. Errors: NO_MEMORY. */
 flatgain_status fg_scale(const struct fg_plant *plant, const struct fg_pattern *pattern,
-                         const struct fg_benchmark *benchmark, double margin_limit, struct fg_arena *arena,
+                         const struct fg_benchmark *benchmark, struct fg_arena *arena,
                          struct fg_scaled *scaled, flatgain_error *error);
 
 /* Gains in natural units from and to the user's (m x p column-major; may be the same array). */

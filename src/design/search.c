@@ -8,8 +8,10 @@
 #include "design/continuation.h"
 #include "design/local.h"
 #include "design/scaling.h"
+#include "design/first_phase.h"
 #include "design/stabilise.h"
 #include "design/starts.h"
+#include "plant/fixed_modes.h"
 
 /* Starts done before the stopping rule is asked again; fixed, so that the answer does not depend on the
  * number of threads. */
@@ -46,6 +48,7 @@ struct worker {
     struct fg_cost *cost;
     struct fg_local *local;
     struct fg_stabiliser *stabiliser;
+    double *best; /* q, of the first phase */
 };
 
 static bool told_to_stop(void *user)
@@ -88,6 +91,12 @@ static void one_start(void *context, int offset)
         if (fg_stabilise(worker->stabiliser, record->theta, 2 * scaled->margin, shift_first, &limits,
                          &record->abscissa, &record->evaluations))
             record->stabilised = isfinite(fg_cost_at(worker->cost, record->theta));
+    }
+    if (record->stabilised && scaled->pattern.count >= FG_FIRST_PHASE_FROM &&
+        !fg_first_phase(worker->cost, &scaled->pattern, 10 * scaled->pattern.count, &limits, record->theta,
+                        worker->best, &record->evaluations)) {
+        atomic_store(&shared->no_memory, true);
+        return;
     }
     if (record->stabilised) {
         record->local = fg_local_minimise(worker->local, worker->cost, &scaled->pattern, record->theta, &limits);
@@ -196,6 +205,42 @@ static void to_user_gain(const struct fg_scaled *scaled, const double *theta, do
     fg_scaled_to_user(scaled, K, K);
 }
 
+/* Modes that no gain moves are exempt from the decay margin: it becomes half the decay of the slowest of
+ * them. They are open-loop modes too, so the costly look for them is taken only when one is that slow. */
+static flatgain_status exempt_fixed_modes(struct shared *shared, struct fg_scaled *scaled, struct fg_cost *cost,
+                                          double *theta, flatgain_error *error)
+{
+    const struct fg_plant *plant = shared->request->plant;
+    const double *re, *im;
+    bool slow = false;
+    if (fg_start(scaled, NULL, 0, 0, theta) != FLATGAIN_OK)
+        return fg_no_memory(error);
+    fg_cost_at(cost, theta);
+    if (isnan(fg_cost_abscissa(cost)))
+        return FLATGAIN_OK;
+    fg_cost_poles(cost, &re, &im);
+    for (int i = 0; i < plant->n; i++) {
+        double decay = plant->discrete ? 1 - hypot(re[i], im[i]) : -re[i];
+        slow = slow || (decay > 0 && decay < 2 * scaled->margin);
+    }
+    if (!slow)
+        return FLATGAIN_OK;
+    struct fg_arena scratch = {0};
+    struct fg_fixed_modes fixed;
+    const char **names = fg_arena_get(&scratch, (size_t)plant->n * sizeof *names);
+    for (int i = 0; names && i < plant->n; i++)
+        names[i] = "";
+    flatgain_status status = names ? fg_modes_fixed(plant, shared->request->pattern, names, &scratch, &fixed, error)
+                                   : fg_no_memory(error);
+    for (int k = 0; status == FLATGAIN_OK && k < fixed.count; k++) {
+        double decay = plant->discrete ? 1 - hypot(fixed.mode[k].re, fixed.mode[k].im) : -fixed.mode[k].re;
+        if (decay > 0 && !fixed.mode[k].unstable)
+            scaled->margin = fmin(scaled->margin, 0.5 * decay / scaled->rate);
+    }
+    fg_arena_release(&scratch);
+    return status == FLATGAIN_NO_MEMORY ? status : FLATGAIN_OK;
+}
+
 static flatgain_status make_worker(struct worker *worker, struct shared *shared)
 {
     const struct fg_scaled *scaled = shared->scaled;
@@ -203,9 +248,9 @@ static flatgain_status make_worker(struct worker *worker, struct shared *shared)
     worker->cost = fg_cost_new(&scaled->plant, &scaled->pattern, &worker->arena);
     worker->local = fg_local_new(scaled->pattern.count, &worker->arena);
     worker->stabiliser = fg_stabiliser_new(&scaled->plant, &scaled->pattern, &worker->arena);
+    worker->best = fg_arena_doubles(&worker->arena, (size_t)scaled->pattern.count);
     if (worker->arena.failed || !worker->cost || !worker->local || !worker->stabiliser)
         return FLATGAIN_NO_MEMORY;
-    fg_cost_margin(worker->cost, scaled->margin);
     return FLATGAIN_OK;
 }
 
@@ -327,8 +372,7 @@ flatgain_status fg_search(const struct fg_search_request *request, struct fg_are
     pad_gain(request, &benchmark, &scratch);
     flatgain_status status = scratch.failed ? fg_no_memory(error) : FLATGAIN_OK;
     if (status == FLATGAIN_OK)
-        status = fg_scale(request->plant, request->pattern, &benchmark, request->margin_limit, &scratch, &scaled,
-                          error);
+        status = fg_scale(request->plant, request->pattern, &benchmark, &scratch, &scaled, error);
     if (status != FLATGAIN_OK) {
         fg_arena_release(&scratch);
         return status;
@@ -357,6 +401,10 @@ flatgain_status fg_search(const struct fg_search_request *request, struct fg_are
         if (make_worker(&workers[i], &shared) != FLATGAIN_OK)
             status = fg_no_memory(error);
     }
+    if (status == FLATGAIN_OK)
+        status = exempt_fixed_modes(&shared, &scaled, workers[0].cost, thetas, error);
+    for (int i = 0; i < threads && status == FLATGAIN_OK; i++)
+        fg_cost_margin(workers[i].cost, scaled.margin);
     if (status == FLATGAIN_OK)
         status = run(&shared, workers, contexts, threads, starts, arena, answer, error);
     for (int i = 0; i < threads; i++)

@@ -10,8 +10,6 @@ struct fg_search_request {
     const struct fg_pattern *pattern;
     const struct fg_benchmark *benchmark;   /* LQR gain and fastest pole, for starts, scales, margin */
     const struct fg_matrix *today;          /* m x p or NULL: also a start */
-    double margin_limit;                    /* half the decay of the slowest mode no gain moves (rate;
-                                               discrete 1 - |z|); INFINITY when there is none */
     int starts;                             /* at most */
     uint64_t seed;
     int threads;                            /* 0: one per processor */
