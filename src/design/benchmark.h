@@ -18,9 +18,10 @@ struct fg_bound {
 
 struct fg_benchmark {
     struct fg_bound lqr, lqg;
-    bool has_lqr_gain;
-    struct fg_matrix L; /* m x n: LQR gain u = -L x when it is attained, on the plant given */
-    double fastest;     /* largest |pole| of the LQR loop; NAN when there is none */
+    bool has_lqr_gain;  /* true whenever the plant can be stabilised */
+    struct fg_matrix L; /* m x n: LQR gain u = -L x on the plant given, where it is attained; where it is not,
+                         * that of slightly larger weights: stabilising, good for starting points only */
+    double fastest;     /* largest |pole| of A - B L; NAN when there is none */
 };
 
 /* Computes both bounds for one plant. Memory for the result from `arena`. Only NO_MEMORY is an error;

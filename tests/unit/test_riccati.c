@@ -338,6 +338,57 @@ START_TEST(unweighted_unstable_mode)
 }
 END_TEST
 
+/* Rounding of 1e-35 below a real coupling once drove the balance until the coupling was lost. Without an
+ * input the equation is S = A'S A + Q, solved by hand for A = [0 a; 0 b]. */
+START_TEST(rounding_does_not_drive_the_balance)
+{
+    struct problem p = random_problem(2, 1);
+    double a = 0.46736, b = -0.71934, q = 6.6e-6;
+    double A[] = {6e-35, -9e-35, a, b};
+    memcpy(p.A.at, A, sizeof A);
+    p.B = fg_matrix_new(&arena, 2, 1);
+    p.N = fg_matrix_new(&arena, 2, 1);
+    p.Q = fg_matrix_new(&arena, 2, 2);
+    FG_AT(p.Q, 0, 0) = FG_AT(p.Q, 1, 1) = q;
+    ck_assert(solve(true, &p));
+    ck_assert_double_eq_tol(FG_AT(p.S, 0, 0), q, 1e-12 * q);
+    ck_assert_double_eq_tol(FG_AT(p.S, 1, 1), q * (1 + a * a) / (1 - b * b), 1e-12 * q);
+}
+END_TEST
+
+/* Where the optimum costs nothing (square weights, stable zeros) S = 0 must come out, not "no convergence".
+ */
+START_TEST(zero_solution)
+{
+    int solved = 0;
+    for (int trial = 0; trial < 40; trial++) {
+        bool discrete = trial % 2;
+        int n = 2 + trial % 3;
+        struct problem p = random_problem(n, n);
+        struct fg_matrix Hx = random_matrix(n, n), Hu = random_matrix(n, n), F = fg_matrix_copy(&arena, Hx);
+        struct fg_matrix lu = fg_matrix_copy(&arena, Hu);
+        int pivot[8], info = 0;
+        for (int i = 0; i < n; i++)
+            FG_AT(lu, i, i) = FG_AT(Hu, i, i) += 3;
+        fg_multiply('T', 'N', 1, Hx, Hx, 0, p.Q);
+        fg_multiply('T', 'N', 1, Hu, Hu, 0, p.R);
+        fg_multiply('T', 'N', 1, Hx, Hu, 0, p.N);
+        dgesv_(&n, &n, lu.at, &n, pivot, F.at, &n, &info);
+        ck_assert_int_eq(info, 0);
+        p.L = F; /* u = -Hu^-1 Hx x makes the cost 0 */
+        if (slowest(discrete, &p) < (discrete ? 0.95 : -0.05)) {
+            double size = fg_matrix_max_abs(p.Q);
+            solved++;
+            p.L = fg_matrix_new(&arena, n, n);
+            ck_assert_msg(solve(discrete, &p), "trial %d", trial);
+            ck_assert_double_le(fg_matrix_max_abs(p.S), 1e-10 * size);
+        }
+        fg_arena_release(&arena);
+    }
+    ck_assert_int_ge(solved, 10);
+}
+END_TEST
+
 /* No stabilising solution: an unstable mode the input does not reach; R not positive definite. */
 START_TEST(refusals)
 {
@@ -368,6 +419,8 @@ int main(void)
     tcase_add_loop_test(tests, units_do_not_matter, 0, 2);
     tcase_add_test(tests, discrete_free_input);
     tcase_add_test(tests, unweighted_unstable_mode);
+    tcase_add_test(tests, rounding_does_not_drive_the_balance);
+    tcase_add_test(tests, zero_solution);
     tcase_add_test(tests, refusals);
     suite_add_tcase(suite, tests);
     SRunner *runner = srunner_create(suite);
