@@ -6,7 +6,12 @@
 #include <stdlib.h>
 #include <string.h>
 
-enum { ALIGNMENT = 64, BLOCK = 16384 };
+/* Small pieces share blocks of this size. Fault tests set it to 1: then every piece is an allocation of its
+ * own, so that each can fail and an address sanitizer sees where each ends. */
+#ifndef FG_ARENA_BLOCK
+#define FG_ARENA_BLOCK 16384
+#endif
+enum { ALIGNMENT = 64, BLOCK = FG_ARENA_BLOCK };
 
 struct fg_block {
     struct fg_block *next;

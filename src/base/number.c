@@ -53,6 +53,8 @@ void fg_number_round(double value, int digits, char text[FG_NUMBER_SIZE])
 enum fg_number_fault fg_number_read(const char *text, size_t length, double *value)
 {
     const char *at = text, *end = text + length;
+    if (length > FG_NUMBER_LONGEST)
+        return FG_NUMBER_NOT;
     size_t whole = 0, part = 0;
     if (at < end && (*at == '+' || *at == '-'))
         at++;
@@ -75,14 +77,9 @@ enum fg_number_fault fg_number_read(const char *text, size_t length, double *val
     }
     if (at != end)
         return FG_NUMBER_NOT;
-    char small[400];
-    char *copy = length < sizeof small ? small : malloc(length + 1);
-    if (!copy)
-        return FG_NUMBER_NOT;
+    char copy[FG_NUMBER_LONGEST + 1];
     memcpy(copy, text, length);
     copy[length] = '\0';
     *value = read_in_locale(copy);
-    if (copy != small)
-        free(copy);
     return isfinite(*value) ? FG_NUMBER_OK : FG_NUMBER_TOO_LARGE;
 }

@@ -5,7 +5,7 @@
 #include <stdbool.h>
 #include <stddef.h>
 
-enum { FG_NUMBER_SIZE = 32 };
+enum { FG_NUMBER_SIZE = 32, FG_NUMBER_LONGEST = 400 };
 
 /* The shortest decimal text that reads back as exactly `value` (finite), e.g. "0.1", "-3", "1e-300". */
 void fg_number_exact(double value, char text[FG_NUMBER_SIZE]);
@@ -16,7 +16,8 @@ void fg_number_round(double value, int digits, char text[FG_NUMBER_SIZE]);
 enum fg_number_fault { FG_NUMBER_OK, FG_NUMBER_NOT, FG_NUMBER_TOO_LARGE };
 
 /* Reads a whole string of `length` bytes as a decimal number: [+-] digits [. digits] [e [+-] digits].
- * No hexadecimal, no inf, no nan, no blanks. 1e999 is TOO_LARGE; 1e-999 is 0. */
+ * No hexadecimal, no inf, no nan, no blanks; more than FG_NUMBER_LONGEST bytes are NOT a number. 1e999 is
+ * TOO_LARGE; 1e-999 is 0. */
 enum fg_number_fault fg_number_read(const char *text, size_t length, double *value);
 
 #endif

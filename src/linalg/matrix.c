@@ -14,7 +14,7 @@ struct fg_matrix fg_matrix_copy(struct fg_arena *arena, struct fg_matrix a)
 {
     struct fg_matrix c = fg_matrix_new(arena, a.rows, a.cols);
     size_t count = (size_t)a.rows * (size_t)a.cols;
-    if (c.at && count)
+    if (c.at && a.at && count)
         memcpy(c.at, a.at, count * sizeof(double));
     return c;
 }
@@ -22,7 +22,7 @@ struct fg_matrix fg_matrix_copy(struct fg_arena *arena, struct fg_matrix a)
 struct fg_matrix fg_matrix_transpose(struct fg_arena *arena, struct fg_matrix a)
 {
     struct fg_matrix c = fg_matrix_new(arena, a.cols, a.rows);
-    if (c.at)
+    if (c.at && a.at)
         for (int j = 0; j < a.cols; j++)
             for (int i = 0; i < a.rows; i++)
                 FG_AT(c, j, i) = FG_AT(a, i, j);

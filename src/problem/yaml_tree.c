@@ -90,7 +90,7 @@ static flatgain_status syntax_error(const struct builder *builder, const yaml_pa
     const char *problem = parser->problem ? parser->problem : "syntax error";
     if (strstr(problem, "cannot start any token") && tab_there(tree, parser->problem_mark))
         return fail(builder, parser->problem_mark, "a tab in the indentation; expected blanks");
-    char text[400], context[200] = "";
+    char text[420], context[200] = "";
     if (parser->context)
         snprintf(context, sizeof context, " %.100s that starts at line %zu, column %zu", parser->context,
                  parser->context_mark.line + 1, parser->context_mark.column + 1);
