@@ -64,6 +64,7 @@ done
 step command-line /usr/bin/python3 tests/cli/run.py build/flatgain
 [ -e tests/oracle/end_to_end.py ] && step scipy-end-to-end /usr/bin/python3 tests/oracle/end_to_end.py build/flatgain
 [ -e tests/faults/check_includes.sh ] && step include-direction sh tests/faults/check_includes.sh
+step readme-example /usr/bin/python3 tests/check_readme.py build/flatgain
 step layout sh tests/check_layout.sh
 if [ "${1:-}" != quick ]; then
     step installed-copy sh tests/faults/test_install.sh

@@ -38,7 +38,8 @@ struct shared {
     struct record *records;
     int first; /* start index of the batch */
     atomic_bool stop, no_memory;
-    flatgain_progress progress; /* of the calling thread */
+    atomic_int finished;        /* starts, whoever did them */
+    flatgain_progress progress; /* touched by the calling thread only */
 };
 
 struct worker {
@@ -105,6 +106,12 @@ static void one_start(void *context, int offset)
         record->abscissa = fg_cost_abscissa(worker->cost);
     }
     record->done = true;
+    int finished = atomic_fetch_add(&shared->finished, 1) + 1;
+    if (worker->calling_thread) {
+        shared->progress.starts_done = finished;
+        if (record->stabilised)
+            shared->progress.best = fmin(shared->progress.best, record->local.J);
+    }
 }
 
 /* Distinct minima among the records so far, best first; one start each in `representative` (the one with
