@@ -23,7 +23,7 @@ CLI_OBJ := $(CLI_SRC:%.c=$(BUILD)/%.o)
 TEST_SRC := $(sort $(wildcard tests/unit/test_*.c))
 TESTS := $(TEST_SRC:tests/unit/%.c=$(BUILD)/tests/%)
 
-.PHONY: all lib tests test bench install format clean
+.PHONY: all lib tests faults test bench install format clean
 all: $(BUILD)/flatgain $(BUILD)/libflatgain.so
 lib: $(BUILD)/libflatgain.a $(BUILD)/libflatgain.so
 tests: $(TESTS)
@@ -49,6 +49,26 @@ $(BUILD)/tests/%: $(BUILD)/tests/unit/%.o $(HELP_OBJ) $(BUILD)/libflatgain.a
 	@mkdir -p $(@D)
 	$(CC) $(LDFLAGS) -o $@ $< $(HELP_OBJ) $(BUILD)/libflatgain.a $(PKG_LIBS) -lslicot $(shell pkg-config --libs check) -lgfortran
 
+# Fault tests: one program per tests/faults/test_*.c. test_memory is linked with a copy of the library whose
+# calls that need memory or a thread go to tests/faults/allocations.c (by objcopy, not by the linker's --wrap, which
+# would redirect those of Check as well), and where every piece of an arena is an allocation of its own.
+FAULT_SRC := $(sort $(wildcard tests/faults/test_*.c))
+FAULTS := $(FAULT_SRC:tests/faults/%.c=$(BUILD)/faults/%)
+REDIRECT = malloc calloc realloc free strndup pthread_create nlopt_create yaml_parser_initialize yaml_parser_parse
+CHECK_LIBS = $(shell pkg-config --libs check)
+faults: $(FAULTS)
+$(BUILD)/faults/libflatgain-refusing.a: $(BUILD)/libflatgain.a
+	@mkdir -p $(@D)
+	$(CC) $(CFLAGS) -DFG_ARENA_BLOCK=1 -c -o $(@D)/arena.o src/base/arena.c
+	@cp $< $@
+	$(AR) r $@ $(@D)/arena.o
+	objcopy $(foreach name,$(REDIRECT),--redefine-sym $(name)=refusing_$(name)) $@
+$(BUILD)/faults/test_memory: $(BUILD)/tests/faults/test_memory.o $(BUILD)/tests/faults/allocations.o $(BUILD)/faults/libflatgain-refusing.a
+	$(CC) $(LDFLAGS) -o $@ $^ $(PKG_LIBS) $(CHECK_LIBS)
+$(BUILD)/faults/%: $(BUILD)/tests/faults/%.o $(BUILD)/libflatgain.a
+	@mkdir -p $(@D)
+	$(CC) $(LDFLAGS) -o $@ $< $(BUILD)/libflatgain.a $(PKG_LIBS) $(CHECK_LIBS)
+
 test:
 	sh tests/run.sh
 
@@ -58,4 +78,5 @@ format:
 clean:
 	rm -rf build
 
--include $(LIB_OBJ:.o=.d) $(CLI_OBJ:.o=.d) $(TEST_SRC:%.c=$(BUILD)/%.d) $(HELP_SRC:%.c=$(BUILD)/%.d)
+-include $(LIB_OBJ:.o=.d) $(CLI_OBJ:.o=.d) $(TEST_SRC:%.c=$(BUILD)/%.d) $(HELP_SRC:%.c=$(BUILD)/%.d) \
+	$(FAULT_SRC:%.c=$(BUILD)/%.d)
