@@ -18,7 +18,7 @@ static const double ORDER_TOLERANCE = 1e-6;
 /* 100 (cost - base) / base; NAN when one of them does not exist or the base is zero to rounding. */
 static double percent_above(double cost, double base, double scale)
 {
-    if (!isfinite(cost) || !isfinite(base) || base <= ZERO_TO_ROUNDING * scale)
+    if (!isfinite(cost) || !isfinite(base) || base <= ZERO_TO_ROUNDING * fmax(scale, cost))
         return NAN;
     double percent = 100 * (cost - base) / base;
     /* a difference within the order tolerance and of the wrong sign is rounding, not a gain */

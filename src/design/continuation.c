@@ -40,9 +40,9 @@ static bool station(const struct fg_scaled *scaled, double mu, struct fg_local *
     return cost != NULL;
 }
 
-flatgain_status fg_continue_to_infimum(const struct fg_scaled *scaled, struct fg_cost *cost, struct fg_local *local,
-                                       const struct fg_local_limits *limits, double *theta,
-                                       struct fg_local_answer *answer)
+flatgain_status fg_continue_to_infimum(const struct fg_scaled *scaled, struct fg_cost *cost,
+                                       struct fg_local *local, const struct fg_local_limits *limits,
+                                       double *theta, struct fg_local_answer *answer)
 {
     struct fg_arena scratch = {0};
     size_t q = (size_t)scaled->pattern.count;

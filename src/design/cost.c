@@ -66,7 +66,8 @@ static void factor_weights(struct fg_cost *cost, const struct fg_plant *plant, s
     fg_arena_release(&scratch);
 }
 
-struct fg_cost *fg_cost_new(const struct fg_plant *plant, const struct fg_pattern *pattern, struct fg_arena *arena)
+struct fg_cost *fg_cost_new(const struct fg_plant *plant, const struct fg_pattern *pattern,
+                            struct fg_arena *arena)
 {
     struct fg_cost *c = fg_arena_get(arena, sizeof *c);
     if (!c)
@@ -91,14 +92,16 @@ struct fg_cost *fg_cost_new(const struct fg_plant *plant, const struct fg_patter
         struct fg_matrix *matrix;
         int rows, cols;
     } shapes[] = {
-        {&c->a, m, m},    {&c->d, p, p},   {&c->F, m, p},   {&c->T, n, n},      {&c->Z, n, n},
-        {&c->Trev, n, n}, {&c->Bs, n, m},  {&c->Cs, p, n},  {&c->Hcl, r, n},    {&c->Gcl, n, g + gv},
-        {&c->Qcl, n, n},  {&c->X, n, n},   {&c->P, n, n},   {&c->BF, n, p},     {&c->FC, m, n},
-        {&c->HuF, r, p},  {&c->FGv, m, gv}, {&c->BP, m, n}, {&c->M, m, n},      {&c->Ct, p, n},
-        {&c->XC, n, p},   {&c->MX, m, n},  {&c->Rt, m, m},  {&c->FV, m, p},     {&c->G, m, p},
-        {&c->scratch_mp, m, p}, {&c->scratch_mm, m, m},     {&c->Bt, n, m},     {&c->Y, n, n},
-        {&c->Rr, p, n},   {&c->X1, p, p},  {&c->V1, p, p},  {&c->R1, m, m},     {&c->R2, m, m},
-        {&c->U, m, p},    {&c->VF, p, m},  {&c->Da, p, m},  {&c->dXC, n, p},    {&c->Vs, p, p},
+        {&c->a, m, m},    {&c->d, p, p},          {&c->F, m, p},          {&c->T, n, n},
+        {&c->Z, n, n},    {&c->Trev, n, n},       {&c->Bs, n, m},         {&c->Cs, p, n},
+        {&c->Hcl, r, n},  {&c->Gcl, n, g + gv},   {&c->Qcl, n, n},        {&c->X, n, n},
+        {&c->P, n, n},    {&c->BF, n, p},         {&c->FC, m, n},         {&c->HuF, r, p},
+        {&c->FGv, m, gv}, {&c->BP, m, n},         {&c->M, m, n},          {&c->Ct, p, n},
+        {&c->XC, n, p},   {&c->MX, m, n},         {&c->Rt, m, m},         {&c->FV, m, p},
+        {&c->G, m, p},    {&c->scratch_mp, m, p}, {&c->scratch_mm, m, m}, {&c->Bt, n, m},
+        {&c->Y, n, n},    {&c->Rr, p, n},         {&c->X1, p, p},         {&c->V1, p, p},
+        {&c->R1, m, m},   {&c->R2, m, m},         {&c->U, m, p},          {&c->VF, p, m},
+        {&c->Da, p, m},   {&c->dXC, n, p},        {&c->Vs, p, p},
     };
     for (size_t i = 0; i < sizeof shapes / sizeof *shapes; i++)
         *shapes[i].matrix = fg_matrix_new(arena, shapes[i].rows, shapes[i].cols);

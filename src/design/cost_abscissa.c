@@ -49,11 +49,13 @@ bool fg_cost_abscissa_gradient(struct fg_cost *c, double *gradient)
     }
     double complex uv = 0;
     for (int i = 0; i < n; i++) {
-        double complex u = left[i] + (pair ? I * left[n + i] : 0), v = right[i] + (pair ? I * right[n + i] : 0);
+        double complex u = left[i] + (pair ? I * left[n + i] : 0),
+                       v = right[i] + (pair ? I * right[n + i] : 0);
         uv += conj(u) * v;
     }
     double wi = pair ? fabs(c->wi[k]) : 0; /* the vectors belong to the member with positive imaginary part */
-    double complex pole = c->wr[k] + I * wi, turn = c->discrete && cabs(pole) > 0 ? conj(pole) / cabs(pole) : 1;
+    double complex pole = c->wr[k] + I * wi,
+                   turn = c->discrete && cabs(pole) > 0 ? conj(pole) / cabs(pole) : 1;
     double *row = c->scratch_mp.at;
     if (cabs(uv) == 0)
         return false;

@@ -17,10 +17,10 @@ struct fg_cost {
     struct fg_matrix Hx, Hu, Gw, Gv;
 
     /* the point */
-    bool usable;     /* finite J: derivatives may be asked for */
+    bool usable; /* finite J: derivatives may be asked for */
     bool has_P;
     double J, abscissa;
-    double *K;       /* m x p */
+    double *K;                /* m x p */
     struct fg_matrix a, d, F; /* (I + K D)^-1 m x m, (I + D K)^-1 p x p, a K m x p */
     double *wr, *wi;
     struct fg_matrix T, Z, Trev;
@@ -30,7 +30,7 @@ struct fg_cost {
     /* derivatives */
     struct fg_matrix BP, M, Ct, XC, MX, Rt, FV, G, scratch_mp, scratch_mm;
     struct fg_matrix Bt, Y, Rr, X1, V1, R1, R2, U, VF, Da, dXC, Vs;
-    double *Hfull; /* U of every parameter: q x (m p) */
+    double *Hfull;      /* U of every parameter: q x (m p) */
     int *first, *entry; /* entries of parameter k: entry[first[k]] .. entry[first[k+1] - 1], as i + j m */
 
     double *schur_work, *lyapunov_work, *theta_gain;

@@ -8,7 +8,8 @@
 /* Relative sizes, all without unit. TOLERANCE: at a Newton step that converges quadratically the next
  * residual would be of the order of its square. LIMIT: a million times the natural size of a gain. */
 static const double TOLERANCE = 1e-10, ACCEPTABLE = 1e-6, LIMIT = 1e6, TINY_RADIUS = 1e-11;
-static const double NOISE = 1e-12; /* relative rounding error of J that steps are judged with */
+static const double MEETS_BOUND = 1e-8; /* relative */
+static const double NOISE = 1e-12;      /* relative rounding error of J that steps are judged with */
 
 struct fg_local {
     int q;
@@ -26,7 +27,8 @@ struct fg_local *fg_local_new(int q, struct fg_arena *arena)
         return NULL;
     l->q = q;
     l->lwork = 40 * q + 64;
-    double **vectors[] = {&l->gradient, &l->step, &l->trial, &l->best, &l->values, &l->rhs, &l->reduced, &l->trial_gradient};
+    double **vectors[] = {&l->gradient, &l->step, &l->trial,   &l->best,
+                          &l->values,   &l->rhs,  &l->reduced, &l->trial_gradient};
     for (size_t i = 0; i < sizeof vectors / sizeof *vectors; i++)
         *vectors[i] = fg_arena_doubles(arena, q);
     l->hessian = fg_arena_doubles(arena, (size_t)q * q);
@@ -39,9 +41,11 @@ struct fg_local *fg_local_new(int q, struct fg_arena *arena)
 }
 
 /* A gain is held when it sits on a bound and the gradient pushes it outward. */
-static bool pushes_outward(const struct fg_pattern *pattern, const double *theta, const double *gradient, int k)
+static bool pushes_outward(const struct fg_pattern *pattern, const double *theta, const double *gradient,
+                           int k)
 {
-    return (theta[k] <= pattern->lower[k] && gradient[k] >= 0) || (theta[k] >= pattern->upper[k] && gradient[k] <= 0);
+    return (theta[k] <= pattern->lower[k] && gradient[k] >= 0) ||
+           (theta[k] >= pattern->upper[k] && gradient[k] <= 0);
 }
 
 /* gradient: of log J */
@@ -122,8 +126,8 @@ static void subproblem(struct fg_local *l, int count, double radius)
 }
 
 /* Step inside the bounds: gains that would leave are put on their bound and the rest is solved again. */
-static bool find_step(struct fg_local *l, const struct fg_pattern *pattern, const double *theta, double radius,
-                      bool decomposed)
+static bool find_step(struct fg_local *l, const struct fg_pattern *pattern, const double *theta,
+                      double radius, bool decomposed)
 {
     int q = l->q;
     memset(l->step, 0, (size_t)q * sizeof(double));
@@ -205,11 +209,13 @@ static void log_derivatives(struct fg_local *l, struct fg_cost *cost, double J)
         l->gradient[k] /= J;
     for (int j = 0; j < q; j++)
         for (int k = 0; k < q; k++)
-            l->hessian[k + (size_t)j * q] = l->hessian[k + (size_t)j * q] / J - l->gradient[k] * l->gradient[j];
+            l->hessian[k + (size_t)j * q] =
+                l->hessian[k + (size_t)j * q] / J - l->gradient[k] * l->gradient[j];
 }
 
-struct fg_local_answer fg_local_minimise(struct fg_local *l, struct fg_cost *cost, const struct fg_pattern *pattern,
-                                         double *theta, const struct fg_local_limits *limits)
+static struct fg_local_answer descend(struct fg_local *l, struct fg_cost *cost,
+                                      const struct fg_pattern *pattern, double *theta,
+                                      const struct fg_local_limits *limits)
 {
     int q = l->q;
     struct fg_local_answer answer = {.end = FG_LOCAL_STOPPED, .J = fg_cost_at(cost, theta), .evaluations = 1};
@@ -258,9 +264,9 @@ struct fg_local_answer fg_local_minimise(struct fg_local *l, struct fg_cost *cos
         fresh = false;
         double expected = predicted(l), size = norm(q, l->step);
         if (!(size > TINY_RADIUS * fmax(1, norm(q, theta))) || !(expected > 0)) {
-            answer.end = answer.residual <= ACCEPTABLE                         ? FG_LOCAL_MINIMUM
+            answer.end = answer.residual <= ACCEPTABLE                     ? FG_LOCAL_MINIMUM
                          : blocked <= ACCEPTABLE * fmax(1, norm(q, theta)) ? FG_LOCAL_BOUNDARY
-                                                                               : FG_LOCAL_STALLED;
+                                                                           : FG_LOCAL_STALLED;
             return answer;
         }
         for (int k = 0; k < q; k++)
@@ -295,4 +301,14 @@ struct fg_local_answer fg_local_minimise(struct fg_local *l, struct fg_cost *cos
         else if (ratio > 0.75 && size > 0.9 * radius)
             radius *= 3;
     }
+}
+
+struct fg_local_answer fg_local_minimise(struct fg_local *l, struct fg_cost *cost,
+                                         const struct fg_pattern *pattern, double *theta,
+                                         const struct fg_local_limits *limits)
+{
+    struct fg_local_answer answer = descend(l, cost, pattern, theta, limits);
+    if (answer.J <= limits->bound * (1 + MEETS_BOUND))
+        answer.end = FG_LOCAL_MINIMUM;
+    return answer;
 }

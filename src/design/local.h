@@ -10,7 +10,7 @@
 #include "design/cost.h"
 
 enum fg_local_end {
-    FG_LOCAL_MINIMUM,   /* residual below the tolerance */
+    FG_LOCAL_MINIMUM,   /* residual below the tolerance, or J meets the bound */
     FG_LOCAL_BOUNDARY,  /* the stability margin stops it, J still falling */
     FG_LOCAL_UNBOUNDED, /* parameters beyond FG_PARAMETER_LIMIT, J still falling */
     FG_LOCAL_STALLED,   /* no progress, residual above the tolerance */
@@ -22,16 +22,18 @@ struct fg_local; /* workspace */
 struct fg_local_answer {
     enum fg_local_end end;
     double J;
-    double residual;   /* max_k |g_k| max(1, |theta_k|) / J over gains not held at a bound */
+    double residual;          /* max_k |g_k| max(1, |theta_k|) / J over gains not held at a bound */
     double smallest, largest; /* eigenvalues of the Hessian on the free gains, divided by J */
     int at_bound;
-    long evaluations;  /* of J */
+    long evaluations; /* of J */
     long hessians;
 };
 
 struct fg_local_limits {
     int iterations;
-    double negligible; /* J at or below this counts as 0: a minimum, since J >= 0 */
+    double negligible;        /* J at or below this counts as 0: a minimum, since J >= 0 */
+    double bound;             /* no gain costs less (J_LQG), 0 when not known: a J that meets it is a minimum,
+                                 also where the way there is too flat for the residual to fall */
     bool (*stop)(void *user); /* may be NULL: asked once per iteration */
     void *user;
 };

@@ -11,6 +11,8 @@ static const double MARGIN = 1e-6;
 /* Share of an input-driven loop in the covariance that gives the units: enough to give a unit to states
  * that the disturbance does not reach. */
 static const double INPUT_SHARE = 1e-2;
+/* Part of J below which the use of an input is rounding. */
+static const double IDLE = 1e-12;
 
 static double or_one(double x)
 {
@@ -52,6 +54,43 @@ static void variances(struct fg_matrix M, struct fg_matrix X, struct fg_arena *s
     }
 }
 
+/* u[i], variance of input i in the LQR loop A - B L, for inputs the loop does not really use: what comes
+ * out there is rounding. An input is idle when white noise of that size on it would cost less than IDLE of
+ * J: (R_ii + b_i'P b_i / rate) u_i^2, P the value of a state in that loop. It gets the size at which it
+ * would cost as much as the whole loop, or 1 when it is free. false when there is no P. */
+static bool size_idle_inputs(const struct fg_plant *plant, struct fg_matrix L, struct fg_matrix Acl,
+                             double rate, struct fg_arena *scratch, double *u)
+{
+    int n = plant->n, m = plant->m;
+    bool memory = false;
+    struct fg_matrix Qcl = fg_matrix_copy(scratch, plant->Q), At = fg_matrix_transpose(scratch, Acl);
+    struct fg_matrix RL = fg_matrix_new(scratch, m, n), P = fg_matrix_new(scratch, n, n);
+    struct fg_matrix PB = fg_matrix_new(scratch, n, m);
+    if (scratch->failed)
+        return false;
+    fg_multiply('N', 'N', 1, plant->R, L, 0, RL);
+    for (int j = 0; j < n; j++) /* L'R L - N L - (N L)' = L'(R L - N') - N L */
+        for (int i = 0; i < m; i++)
+            FG_AT(RL, i, j) -= FG_AT(plant->N, j, i);
+    fg_multiply('T', 'N', 1, L, RL, 1, Qcl);
+    fg_multiply('N', 'N', -1, plant->N, L, 1, Qcl);
+    fg_matrix_symmetrise(Qcl);
+    if (!fg_lyapunov(plant->discrete, At, Qcl, P, &memory)) {
+        scratch->failed = scratch->failed || memory;
+        return false;
+    }
+    double J = fabs(fg_matrix_trace_of_product(P, plant->W));
+    fg_multiply('N', 'N', 1, P, plant->B, 0, PB);
+    for (int i = 0; i < m; i++) {
+        double price = FG_AT(plant->R, i, i);
+        for (int j = 0; j < n; j++)
+            price += FG_AT(plant->B, j, i) * FG_AT(PB, j, i) / rate;
+        if (!(price * u[i] > IDLE * J))
+            u[i] = FG_AT(plant->R, i, i) > 0 && J > 0 ? J / FG_AT(plant->R, i, i) : 1;
+    }
+    return true;
+}
+
 /* Standard deviations in the LQR loop; false when there is no such loop. */
 static bool units_from_loop(const struct fg_plant *plant, const struct fg_benchmark *benchmark,
                             struct fg_arena *scratch, struct units *units)
@@ -74,22 +113,14 @@ static bool units_from_loop(const struct fg_plant *plant, const struct fg_benchm
         return false;
     }
     variances(benchmark->L, X, scratch, u);
-    double effort = 0;
-    for (int i = 0; i < m; i++)
-        effort += FG_AT(plant->R, i, i) * u[i];
-    /* inputs the law leaves alone get the size that costs as much as the others do, or as the states do */
-    if (effort <= 0)
-        for (int i = 0; i < n; i++)
-            for (int j = 0; j < n; j++)
-                effort += FG_AT(plant->Q, i, j) * FG_AT(X, j, i);
-    for (int i = 0; i < m; i++)
-        if (!(u[i] > 0))
-            u[i] = FG_AT(plant->R, i, i) > 0 && effort > 0 ? effort / FG_AT(plant->R, i, i) : 1;
+    if (!size_idle_inputs(plant, benchmark->L, A, units->rate, scratch, u))
+        return false;
     /* add a loop driven from the inputs, so that every controllable state and output has a unit */
     for (int i = 0; i < n; i++)
         for (int j = 0; j < n; j++)
             for (int k = 0; k < m; k++)
-                FG_AT(W, i, j) += INPUT_SHARE * FG_AT(plant->B, i, k) * u[k] * FG_AT(plant->B, j, k) / units->rate;
+                FG_AT(W, i, j) +=
+                    INPUT_SHARE * FG_AT(plant->B, i, k) * u[k] * FG_AT(plant->B, j, k) / units->rate;
     if (!fg_lyapunov(plant->discrete, A, W, X, &memory)) {
         scratch->failed = scratch->failed || memory;
         return false;
@@ -140,7 +171,8 @@ static void scale_plant(const struct fg_plant *plant, const struct units *units,
                         struct fg_plant *out)
 {
     *out = *plant;
-    struct fg_matrix *matrices[] = {&out->A, &out->B, &out->C, &out->D, &out->Q, &out->R, &out->N, &out->W, &out->V};
+    struct fg_matrix *matrices[] = {&out->A, &out->B, &out->C, &out->D, &out->Q,
+                                    &out->R, &out->N, &out->W, &out->V};
     for (size_t i = 0; i < sizeof matrices / sizeof *matrices; i++)
         *matrices[i] = fg_matrix_copy(arena, *matrices[i]);
     if (arena->failed)
@@ -192,7 +224,8 @@ flatgain_status fg_scale(const struct fg_plant *plant, const struct fg_pattern *
                          struct fg_scaled *scaled, flatgain_error *error)
 {
     struct fg_arena scratch = {0};
-    struct units units = {fg_arena_doubles(arena, (size_t)plant->n), fg_arena_doubles(arena, (size_t)plant->m),
+    struct units units = {fg_arena_doubles(arena, (size_t)plant->n),
+                          fg_arena_doubles(arena, (size_t)plant->m),
                           fg_arena_doubles(arena, (size_t)plant->p), 1, 1};
     *scaled = (struct fg_scaled){.input = units.input, .output = units.output};
     if (!arena->failed && !units_from_loop(plant, benchmark, &scratch, &units) && !scratch.failed)

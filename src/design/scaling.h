@@ -14,7 +14,7 @@ struct fg_scaled {
     double rate;               /* natural rate: rad per time unit; discrete 1 */
     double margin;             /* decay margin of the search in natural units (docs/method.md) */
     bool has_L;
-    struct fg_matrix L;        /* m x n LQR gain in natural units */
+    struct fg_matrix L; /* m x n LQR gain in natural units */
 };
 
 /* Memory of the result from `arena`. Errors: NO_MEMORY. */

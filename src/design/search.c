@@ -64,8 +64,10 @@ static bool told_to_stop(void *user)
 
 static struct fg_local_limits limits_of(struct worker *worker)
 {
+    const struct fg_bound *lqg = &worker->shared->request->benchmark->lqg;
     return (struct fg_local_limits){.iterations = ITERATIONS,
                                     .negligible = NEGLIGIBLE * fg_natural_cost(worker->shared->scaled),
+                                    .bound = lqg->kind == FG_BOUND_NONE ? 0 : lqg->cost,
                                     .stop = told_to_stop,
                                     .user = worker};
 }
@@ -100,7 +102,8 @@ static void one_start(void *context, int offset)
         return;
     }
     if (record->stabilised) {
-        record->local = fg_local_minimise(worker->local, worker->cost, &scaled->pattern, record->theta, &limits);
+        record->local =
+            fg_local_minimise(worker->local, worker->cost, &scaled->pattern, record->theta, &limits);
         record->evaluations += record->local.evaluations;
         fg_cost_at(worker->cost, record->theta);
         record->abscissa = fg_cost_abscissa(worker->cost);
@@ -214,8 +217,8 @@ static void to_user_gain(const struct fg_scaled *scaled, const double *theta, do
 
 /* Modes that no gain moves are exempt from the decay margin: it becomes half the decay of the slowest of
  * them. They are open-loop modes too, so the costly look for them is taken only when one is that slow. */
-static flatgain_status exempt_fixed_modes(struct shared *shared, struct fg_scaled *scaled, struct fg_cost *cost,
-                                          double *theta, flatgain_error *error)
+static flatgain_status exempt_fixed_modes(struct shared *shared, struct fg_scaled *scaled,
+                                          struct fg_cost *cost, double *theta, flatgain_error *error)
 {
     const struct fg_plant *plant = shared->request->plant;
     const double *re, *im;
@@ -237,8 +240,9 @@ static flatgain_status exempt_fixed_modes(struct shared *shared, struct fg_scale
     const char **names = fg_arena_get(&scratch, (size_t)plant->n * sizeof *names);
     for (int i = 0; names && i < plant->n; i++)
         names[i] = "";
-    flatgain_status status = names ? fg_modes_fixed(plant, shared->request->pattern, names, &scratch, &fixed, error)
-                                   : fg_no_memory(error);
+    flatgain_status status =
+        names ? fg_modes_fixed(plant, shared->request->pattern, names, &scratch, &fixed, error)
+              : fg_no_memory(error);
     for (int k = 0; status == FLATGAIN_OK && k < fixed.count; k++) {
         double decay = plant->discrete ? 1 - hypot(fixed.mode[k].re, fixed.mode[k].im) : -fixed.mode[k].re;
         if (decay > 0 && !fixed.mode[k].unstable)
@@ -261,8 +265,8 @@ static flatgain_status make_worker(struct worker *worker, struct shared *shared)
     return FLATGAIN_OK;
 }
 
-static void report(struct shared *shared, int count, struct fg_search_answer *answer, const int *representative,
-                   const int *hits, struct fg_arena *arena)
+static void report(struct shared *shared, int count, struct fg_search_answer *answer,
+                   const int *representative, const int *hits, struct fg_arena *arena)
 {
     const struct fg_scaled *scaled = shared->scaled;
     const struct record *records = shared->records;
@@ -303,8 +307,9 @@ static void report(struct shared *shared, int count, struct fg_search_answer *an
     }
 }
 
-static flatgain_status run(struct shared *shared, struct worker *workers, void **contexts, int threads, int starts,
-                           struct fg_arena *arena, struct fg_search_answer *answer, flatgain_error *error)
+static flatgain_status run(struct shared *shared, struct worker *workers, void **contexts, int threads,
+                           int starts, struct fg_arena *arena, struct fg_search_answer *answer,
+                           flatgain_error *error)
 {
     int *representative = fg_arena_ints(arena, (size_t)starts), *hits = fg_arena_ints(arena, (size_t)starts);
     double negligible = NEGLIGIBLE * fg_natural_cost(shared->scaled);
@@ -320,7 +325,8 @@ static flatgain_status run(struct shared *shared, struct worker *workers, void *
         if (atomic_load(&shared->no_memory))
             return fg_no_memory(error);
         count += batch;
-        answer->distinct = distinct_minima(shared->records, count, negligible, representative, hits, &converged);
+        answer->distinct =
+            distinct_minima(shared->records, count, negligible, representative, hits, &converged);
         answer->expected_minima = expected_minima(answer->distinct, converged);
         int best = best_record(shared->records, count);
         shared->progress.starts_done = count;
@@ -345,7 +351,8 @@ static flatgain_status run(struct shared *shared, struct worker *workers, void *
             return fg_no_memory(error);
         fg_cost_at(workers[0].cost, record->theta);
         record->abscissa = fg_cost_abscissa(workers[0].cost);
-        answer->distinct = distinct_minima(shared->records, count, negligible, representative, hits, &converged);
+        answer->distinct =
+            distinct_minima(shared->records, count, negligible, representative, hits, &converged);
     }
     answer->interrupted = atomic_load(&shared->stop);
     report(shared, count, answer, representative, hits, arena);
@@ -353,7 +360,8 @@ static flatgain_status run(struct shared *shared, struct worker *workers, void *
 }
 
 /* The benchmark's LQR gain belongs to the plant without sensor lags: pad it with zero columns. */
-static void pad_gain(const struct fg_search_request *request, struct fg_benchmark *benchmark, struct fg_arena *arena)
+static void pad_gain(const struct fg_search_request *request, struct fg_benchmark *benchmark,
+                     struct fg_arena *arena)
 {
     int n = request->plant->n, m = request->plant->m;
     *benchmark = *request->benchmark;

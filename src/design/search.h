@@ -6,13 +6,13 @@
 #include "plant/model.h"
 
 struct fg_search_request {
-    const struct fg_plant *plant;           /* model.law */
+    const struct fg_plant *plant; /* model.law */
     const struct fg_pattern *pattern;
-    const struct fg_benchmark *benchmark;   /* LQR gain and fastest pole, for starts, scales, margin */
-    const struct fg_matrix *today;          /* m x p or NULL: also a start */
-    int starts;                             /* at most */
+    const struct fg_benchmark *benchmark; /* LQR gain and fastest pole, for starts, scales, margin */
+    const struct fg_matrix *today;        /* m x p or NULL: also a start */
+    int starts;                           /* at most */
     uint64_t seed;
-    int threads;                            /* 0: one per processor */
+    int threads; /* 0: one per processor */
     int (*progress)(const flatgain_progress *, void *);
     void *user;
 };
@@ -35,9 +35,9 @@ struct fg_search_minimum {
 struct fg_search_answer {
     enum fg_search_end end;
     bool interrupted;
-    double *K;            /* m x p column-major, user units */
-    double cost;          /* INFINITY when not stable */
-    double abscissa;      /* least unstable: largest real part (discrete: radius) of the loop with K */
+    double *K;       /* m x p column-major, user units */
+    double cost;     /* INFINITY when not stable */
+    double abscissa; /* least unstable: largest real part (discrete: radius) of the loop with K */
     double residual, smallest_curvature;
     int at_bound;
     int starts, stabilised, distinct;
@@ -45,7 +45,7 @@ struct fg_search_answer {
     long evaluations;
     bool rule_satisfied;
     double expected_minima;
-    double decay_margin;  /* the search never went closer to the boundary than this (user's time unit) */
+    double decay_margin; /* the search never went closer to the boundary than this (user's time unit) */
 };
 
 flatgain_status fg_search(const struct fg_search_request *request, struct fg_arena *arena,

@@ -63,14 +63,15 @@ static bool told_to_stop(const struct fg_local_limits *limits)
     return limits->stop && limits->stop(limits->user);
 }
 
-static bool by_shift(struct fg_stabiliser *s, double *theta, double margin, const struct fg_local_limits *limits,
-                     double *abscissa, long *evaluations)
+static bool by_shift(struct fg_stabiliser *s, double *theta, double margin,
+                     const struct fg_local_limits *limits, double *abscissa, long *evaluations)
 {
     double a = *abscissa, distance = 0.3;
     size_t size = (size_t)s->pattern->count * sizeof(double);
     struct fg_local_limits few = {.iterations = SHIFT_STEPS, .stop = limits->stop, .user = limits->user};
     for (int round = 0; round < SHIFT_ROUNDS && distance > TIGHTEST && !told_to_stop(limits); round++) {
-        double step = distance * fmax(s->plant.discrete ? 0.1 : 1e-2, s->plant.discrete ? fabs(a - 1) : fabs(a));
+        double step =
+            distance * fmax(s->plant.discrete ? 0.1 : 1e-2, s->plant.discrete ? fabs(a - 1) : fabs(a));
         memcpy(s->best, theta, size);
         fg_cost_shift(s->cost, a + step);
         struct fg_local_answer answer = fg_local_minimise(s->local, s->cost, s->pattern, theta, &few);
@@ -99,7 +100,8 @@ static bool line_search(struct fg_stabiliser *s, double *theta, double *value, l
         slope += s->gradient[k] * s->direction[k];
     for (int step = 0; step < LINE_STEPS; step++) {
         for (int k = 0; k < q; k++)
-            s->trial[k] = fmin(fmax(theta[k] + t * s->direction[k], s->pattern->lower[k]), s->pattern->upper[k]);
+            s->trial[k] =
+                fmin(fmax(theta[k] + t * s->direction[k], s->pattern->lower[k]), s->pattern->upper[k]);
         double now = abscissa_at(s, s->trial, evaluations);
         if (!(now < *value + 1e-4 * t * slope)) {
             high = t;
@@ -120,7 +122,8 @@ static bool line_search(struct fg_stabiliser *s, double *theta, double *value, l
     if (low == 0)
         return false;
     for (int k = 0; k < q; k++)
-        s->trial[k] = fmin(fmax(theta[k] + low * s->direction[k], s->pattern->lower[k]), s->pattern->upper[k]);
+        s->trial[k] =
+            fmin(fmax(theta[k] + low * s->direction[k], s->pattern->lower[k]), s->pattern->upper[k]);
     *value = abscissa_at(s, s->trial, evaluations);
     return fg_cost_abscissa_gradient(s->cost, s->new_gradient);
 }
@@ -151,12 +154,13 @@ static void update_inverse(struct fg_stabiliser *s, const double *theta)
     for (int j = 0; j < q; j++)
         for (int k = 0; k < q; k++) {
             double dk = s->trial[k] - theta[k], dj = s->trial[j] - theta[j];
-            s->inverse[k + (size_t)j * q] += (1 + yHy / dy) * dk * dj / dy - (dk * s->Hy[j] + s->Hy[k] * dj) / dy;
+            s->inverse[k + (size_t)j * q] +=
+                (1 + yHy / dy) * dk * dj / dy - (dk * s->Hy[j] + s->Hy[k] * dj) / dy;
         }
 }
 
-static bool directly(struct fg_stabiliser *s, double *theta, double margin, const struct fg_local_limits *limits,
-                     double *abscissa, long *evaluations)
+static bool directly(struct fg_stabiliser *s, double *theta, double margin,
+                     const struct fg_local_limits *limits, double *abscissa, long *evaluations)
 {
     int q = s->pattern->count;
     double value = abscissa_at(s, theta, evaluations);

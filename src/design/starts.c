@@ -21,8 +21,8 @@ static void random_gain(const struct fg_pattern *pattern, struct fg_random *rand
 
 /* K = L X C~' (C~ X C~')^+, C~ = C - D L: the gain whose input is closest to -L x in the mean square over
  * the LQR loop's state covariance X (Kosut, IEEE TAC 15 (1970) 557). */
-static bool project(const struct fg_plant *plant, struct fg_matrix L, struct fg_matrix W, struct fg_arena *scratch,
-                    double *K)
+static bool project(const struct fg_plant *plant, struct fg_matrix L, struct fg_matrix W,
+                    struct fg_arena *scratch, double *K)
 {
     int n = plant->n, m = plant->m, p = plant->p, info = 0, lwork = 40 * p + 64;
     bool memory = false;
@@ -122,7 +122,8 @@ flatgain_status fg_start(const struct fg_scaled *scaled, const double *today_the
     }
     struct fg_arena scratch = {0};
     bool projected = index % 2 == 0 || index == 1;
-    if (!projected || !projected_gain(scaled, index <= 2 && (index == 1 || today_theta), &random, &scratch, theta))
+    if (!projected ||
+        !projected_gain(scaled, index <= 2 && (index == 1 || today_theta), &random, &scratch, theta))
         random_gain(pattern, &random, theta);
     bool failed = scratch.failed;
     fg_arena_release(&scratch);
