@@ -91,35 +91,35 @@ FLATGAIN_API flatgain_status flatgain_problem_parse(const char *text, size_t len
 
 /* A problem from matrices in memory. NULL pointers mean "absent": D, N, V zero; pattern all free. */
 typedef struct flatgain_matrices {
-    int discrete;           /* 0 continuous, 1 discrete */
-    int start;              /* 0: W is the disturbance; 1: W is E[x0 x0'] of a random start, no noise */
-    int states;             /* n >= 1 */
-    int inputs;             /* m >= 1 */
-    int outputs;            /* p >= 1 */
-    const double *A;        /* n x n */
-    const double *B;        /* n x m */
-    const double *C;        /* p x n */
-    const double *D;        /* p x m */
-    const double *Q;        /* n x n, with R and N: [Q N; N' R] >= 0 */
-    const double *R;        /* m x m */
-    const double *N;        /* n x m */
-    const double *W;        /* n x n >= 0 */
-    const double *V;        /* p x p >= 0: per step (discrete), intensity (continuous: needs lag) */
-    const double *lag;      /* p, time constant of each output's sensor filter, 0 = none (continuous) */
-    const double *fixed;    /* m x p, NAN = free, a number = fixed there */
-    const double *lower;    /* m x p, -INFINITY = none */
-    const double *upper;    /* m x p, INFINITY = none */
-    const double *today;    /* m x p, the gain in use now */
-    double accept_percent;  /* accepted gap to LQG in percent, NAN = not stated */
+    int discrete;          /* 0 continuous, 1 discrete */
+    int start;             /* 0: W is the disturbance; 1: W is E[x0 x0'] of a random start, no noise */
+    int states;            /* n >= 1 */
+    int inputs;            /* m >= 1 */
+    int outputs;           /* p >= 1 */
+    const double *A;       /* n x n */
+    const double *B;       /* n x m */
+    const double *C;       /* p x n */
+    const double *D;       /* p x m */
+    const double *Q;       /* n x n, with R and N: [Q N; N' R] >= 0 */
+    const double *R;       /* m x m */
+    const double *N;       /* n x m */
+    const double *W;       /* n x n >= 0 */
+    const double *V;       /* p x p >= 0: per step (discrete), intensity (continuous: needs lag) */
+    const double *lag;     /* p, time constant of each output's sensor filter, 0 = none (continuous) */
+    const double *fixed;   /* m x p, NAN = free, a number = fixed there */
+    const double *lower;   /* m x p, -INFINITY = none */
+    const double *upper;   /* m x p, INFINITY = none */
+    const double *today;   /* m x p, the gain in use now */
+    double accept_percent; /* accepted gap to LQG in percent, NAN = not stated */
 } flatgain_matrices;
 
 FLATGAIN_API flatgain_status flatgain_problem_from_matrices(const flatgain_matrices *matrices,
                                                             flatgain_problem **problem,
                                                             flatgain_error *error);
 FLATGAIN_API void flatgain_problem_free(flatgain_problem *problem);
-FLATGAIN_API int flatgain_problem_inputs(const flatgain_problem *problem);  /* m */
-FLATGAIN_API int flatgain_problem_outputs(const flatgain_problem *problem); /* p */
-FLATGAIN_API int flatgain_problem_states(const flatgain_problem *problem);  /* n, without sensor lags */
+FLATGAIN_API int flatgain_problem_inputs(const flatgain_problem *problem);        /* m */
+FLATGAIN_API int flatgain_problem_outputs(const flatgain_problem *problem);       /* p */
+FLATGAIN_API int flatgain_problem_states(const flatgain_problem *problem);        /* n, without sensor lags */
 FLATGAIN_API const char *flatgain_problem_title(const flatgain_problem *problem); /* "" when none */
 /* The gain in use now, m x p row-major, or NULL. */
 FLATGAIN_API const double *flatgain_problem_today(const flatgain_problem *problem);

@@ -1,4 +1,4 @@
-/* J(K) with gradient and Hessian in the free gains, from one real Schur form (docs/method.md).
+/* J(K) with gradient and Hessian in the free gains, from one real Schur form (docs/method.md eq. 4 to 16).
  * After fg_cost_new nothing is allocated. One evaluator per thread; the plant is shared and constant. */
 #ifndef FG_DESIGN_COST_H
 #define FG_DESIGN_COST_H

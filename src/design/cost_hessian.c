@@ -8,8 +8,8 @@
  *                 [discrete: + 2 tr(E1~'B'P B E2~ C X C') + 2 tr(E1~'R E2~ V)]
  *                 - <dJ/dK, E2 D a E1 + E1 D a E2>
  *
- * so one Lyapunov solve on the Schur form at hand serves one direction. Derived in docs/method.md,
- * checked there against finite differences. */
+ * so one Lyapunov solve on the Schur form at hand serves one direction. Derived in docs/method.md eq. 13 to
+ * 16, checked against finite differences in tests/unit/test_cost.c. */
 #include <string.h>
 
 #include "design/cost_internal.h"

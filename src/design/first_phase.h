@@ -5,7 +5,7 @@
 
 #include "design/local.h"
 
-/* More free gains than this: the first phase pays (measured: docs/speed.md, tests/bench/bench_local.c). */
+/* From this many free gains on the first phase pays (measured: docs/speed.md, tests/bench/bench_local.c). */
 enum { FG_FIRST_PHASE_FROM = 80 };
 
 /* theta in: finite J inside the bounds; out: the best point met. Returns false when NLopt could not be set

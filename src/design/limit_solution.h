@@ -1,7 +1,7 @@
 /* The linear-quadratic problem when some inputs cost nothing (R singular): its cost is the limit of
  * R + eps I as eps falls to 0, found exactly by reducing the order, never with a small fictitious weight
- * (Bryson, Johansen, IEEE TAC 10 (1965) 4, in its dual form; docs/method.md). The filter with noise-free
- * outputs is the same problem for (A', C', W, V). */
+ * (Bryson, Johansen, IEEE TAC 10 (1965) 4, in its dual form; docs/method.md eq. 38, 39). The filter with
+ * noise-free outputs is the same problem for (A', C', W, V). */
 #ifndef FG_DESIGN_LIMIT_SOLUTION_H
 #define FG_DESIGN_LIMIT_SOLUTION_H
 

@@ -1,7 +1,7 @@
 /* Natural units, so that the same plant in other units gives the same law. The units are the standard
  * deviations of states, inputs and outputs in the LQR loop and the fastest pole of that loop as unit of
  * rate: they change with the user's units exactly as they should. In scaled parameters a gain of size 1
- * is a natural size. J is not scaled. */
+ * is a natural size. J is not scaled. docs/method.md eq. 18. */
 #ifndef FG_DESIGN_SCALING_H
 #define FG_DESIGN_SCALING_H
 
@@ -12,7 +12,7 @@ struct fg_scaled {
     struct fg_pattern pattern; /* sign carries the ratio of units, bounds are those of theta / unit */
     double *input, *output;    /* m, p: natural size of u_i and y_j in the user's units */
     double rate;               /* natural rate: rad per time unit; discrete 1 */
-    double margin;             /* decay margin of the search in natural units (docs/method.md) */
+    double margin;             /* decay margin of the search in natural units ("Decay margin" there) */
     bool has_L;
     struct fg_matrix L; /* m x n LQR gain in natural units */
 };

@@ -66,9 +66,9 @@ void dgehrd_(const int *n, const int *ilo, const int *ihi, double *a, const int 
              double *work, const int *lwork, int *info);
 void dorghr_(const int *n, const int *ilo, const int *ihi, double *a, const int *lda, const double *tau,
              double *work, const int *lwork, int *info);
-void dtrevc3_(const char *side, const char *howmny, int *select, const int *n, const double *t, const int *ldt,
-              double *vl, const int *ldvl, double *vr, const int *ldvr, const int *mm, int *m, double *work,
-              const int *lwork, int *info, size_t, size_t);
+void dtrevc3_(const char *side, const char *howmny, int *select, const int *n, const double *t,
+              const int *ldt, double *vl, const int *ldvl, double *vr, const int *ldvr, const int *mm, int *m,
+              double *work, const int *lwork, int *info, size_t, size_t);
 void dpstrf_(const char *uplo, const int *n, double *a, const int *lda, int *piv, int *rank,
              const double *tol, double *work, int *info, size_t);
 

@@ -13,8 +13,8 @@
  * reversing rows and columns: with J the exchange matrix, J T'J is again upper quasi-triangular. */
 
 enum {
-    LEAF = 24,   /* orders up to this go to the plain kernel; measured best of 12, 16, 24, 32, 48 */
-    SIDE = LEAF  /* scratch of the kernel */
+    LEAF = 24,  /* orders up to this go to the plain kernel; measured best of 12, 16, 24, 32, 48 */
+    SIDE = LEAF /* scratch of the kernel */
 };
 
 /* Solves the k x k system M z = r (k <= 4, row-major M) by elimination with full row pivoting. */
@@ -93,8 +93,8 @@ static inline void subtract(int rows, double *restrict y, const double *restrict
 
 /* The kernel for m, n <= LEAF. `symmetric` says A = B, C = C': then only the upper half is solved and
  * mirrored. Column blocks from the last to the first, row blocks from the last to the first. */
-static void leaf(bool discrete, bool symmetric, int m, int n, const double *A, int lda, const double *B, int ldb,
-                 double *C, int ldc)
+static void leaf(bool discrete, bool symmetric, int m, int n, const double *A, int lda, const double *B,
+                 int ldb, double *C, int ldc)
 {
     double r[2 * SIDE], y[2 * SIDE];
     for (int end = n; end > 0;) {
@@ -159,8 +159,8 @@ static void leaf(bool discrete, bool symmetric, int m, int n, const double *A, i
     }
 }
 
-static void gemm(char ta, char tb, int m, int n, int k, double alpha, const double *a, int lda, const double *b,
-                 int ldb, double beta, double *c, int ldc)
+static void gemm(char ta, char tb, int m, int n, int k, double alpha, const double *a, int lda,
+                 const double *b, int ldb, double beta, double *c, int ldc)
 {
     dgemm_(&ta, &tb, &m, &n, &k, &alpha, a, &lda, b, &ldb, &beta, c, &ldc, 1, 1);
 }
@@ -173,8 +173,8 @@ static int cut(const double *T, int ld, int n)
 }
 
 /* work: m x n doubles, discrete only. */
-static void sylvester(bool discrete, int m, int n, const double *A, int lda, const double *B, int ldb, double *C,
-                      int ldc, double *work)
+static void sylvester(bool discrete, int m, int n, const double *A, int lda, const double *B, int ldb,
+                      double *C, int ldc, double *work)
 {
     if (m <= LEAF && n <= LEAF) {
         leaf(discrete, false, m, n, A, lda, B, ldb, C, ldc);
@@ -276,7 +276,8 @@ static int never(const double *re, const double *im)
     return 0;
 }
 
-bool fg_lyapunov(bool discrete, struct fg_matrix A, struct fg_matrix C, struct fg_matrix X, bool *failed_memory)
+bool fg_lyapunov(bool discrete, struct fg_matrix A, struct fg_matrix C, struct fg_matrix X,
+                 bool *failed_memory)
 {
     int n = A.rows, lwork = 8 * n + 64, info = 0, sdim = 0;
     *failed_memory = false;

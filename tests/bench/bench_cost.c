@@ -40,7 +40,8 @@ int main(void)
 {
     static const int orders[] = {4, 6, 10, 20, 30, 50, 100, 200, 400};
     printf("cost with gradient against one dgees and two dtrsyl (medians, one thread)\n");
-    printf("%6s %10s %14s %14s %7s %14s %14s\n", "n", "setting", "floor us", "cost+grad us", "ratio", "cost us", "Hessian us");
+    printf("%6s %10s %14s %14s %7s %14s %14s\n", "n", "setting", "floor us", "cost+grad us", "ratio",
+           "cost us", "Hessian us");
     for (size_t k = 0; k < sizeof orders / sizeof *orders; k++)
         for (int discrete = 0; discrete < 2; discrete++) {
             struct fg_arena arena = {0};
@@ -55,11 +56,19 @@ int main(void)
             struct fg_pattern pattern = free_pattern(&arena, m, p);
             struct fg_cost *cost = fg_cost_new(&plant, &pattern, &arena);
             double theta[9] = {0}, gradient[9], hessian[81];
-            int lwork = 20 * n, info, sdim, one = 1, runs = n <= 20 ? 2001 : n <= 100 ? 201 : n <= 200 ? 21 : 5;
-            struct fg_matrix T = fg_matrix_new(&arena, n, n), Z = fg_matrix_new(&arena, n, n), X = fg_matrix_new(&arena, n, n);
-            double *wr = fg_arena_doubles(&arena, n), *wi = fg_arena_doubles(&arena, n), *work = fg_arena_doubles(&arena, (size_t)lwork);
-            double *floor_s = malloc((size_t)runs * sizeof(double)), *ours = malloc((size_t)runs * sizeof(double));
-            double *value = malloc((size_t)runs * sizeof(double)), *second = malloc((size_t)runs * sizeof(double)), scale;
+            int lwork = 20 * n, info, sdim, one = 1,
+                runs = n <= 20    ? 2001
+                       : n <= 100 ? 201
+                       : n <= 200 ? 21
+                                  : 5;
+            struct fg_matrix T = fg_matrix_new(&arena, n, n), Z = fg_matrix_new(&arena, n, n),
+                             X = fg_matrix_new(&arena, n, n);
+            double *wr = fg_arena_doubles(&arena, n), *wi = fg_arena_doubles(&arena, n),
+                   *work = fg_arena_doubles(&arena, (size_t)lwork);
+            double *floor_s = malloc((size_t)runs * sizeof(double)),
+                   *ours = malloc((size_t)runs * sizeof(double));
+            double *value = malloc((size_t)runs * sizeof(double)),
+                   *second = malloc((size_t)runs * sizeof(double)), scale;
             for (int r = 0; r < runs; r++) {
                 for (int i = 0; i < q; i++)
                     theta[i] = 1e-3 * random_uniform();
@@ -80,13 +89,15 @@ int main(void)
                 memcpy(T.at, plant.A.at, (size_t)n * n * sizeof(double));
                 memcpy(X.at, plant.W.at, (size_t)n * n * sizeof(double));
                 start = now();
-                dgees_("V", "N", never, &n, T.at, &n, &sdim, wr, wi, Z.at, &n, work, &lwork, NULL, &info, 1, 1);
+                dgees_("V", "N", never, &n, T.at, &n, &sdim, wr, wi, Z.at, &n, work, &lwork, NULL, &info, 1,
+                       1);
                 dtrsyl_("N", "T", &one, &n, &n, T.at, &n, T.at, &n, X.at, &n, &scale, &info, 1, 1);
                 dtrsyl_("T", "N", &one, &n, &n, T.at, &n, T.at, &n, X.at, &n, &scale, &info, 1, 1);
                 floor_s[r] = now() - start;
             }
             double f = median(runs, floor_s), c = median(runs, ours);
-            printf("%6d %10s %14.1f %14.1f %7.2f %14.1f %14.1f\n", n, discrete ? "discrete" : "continuous", 1e6 * f, 1e6 * c, c / f, 1e6 * median(runs, value), 1e6 * median(runs, second));
+            printf("%6d %10s %14.1f %14.1f %7.2f %14.1f %14.1f\n", n, discrete ? "discrete" : "continuous",
+                   1e6 * f, 1e6 * c, c / f, 1e6 * median(runs, value), 1e6 * median(runs, second));
             free(floor_s);
             free(ours);
             free(value);

@@ -34,7 +34,17 @@ int main(int argc, char **argv)
             rows[k] = malloc((size_t)from[k]->rows * (size_t)from[k]->cols * sizeof(double));
             fg_matrix_to_rows(*from[k], rows[k]);
         }
-        flatgain_matrices matrices = {.states = n, .inputs = 3, .outputs = 3, .A = rows[0], .B = rows[1], .C = rows[2], .Q = rows[3], .R = rows[4], .N = rows[5], .W = rows[6], .accept_percent = NAN};
+        flatgain_matrices matrices = {.states = n,
+                                      .inputs = 3,
+                                      .outputs = 3,
+                                      .A = rows[0],
+                                      .B = rows[1],
+                                      .C = rows[2],
+                                      .Q = rows[3],
+                                      .R = rows[4],
+                                      .N = rows[5],
+                                      .W = rows[6],
+                                      .accept_percent = NAN};
         flatgain_problem *problem;
         flatgain_result *result;
         flatgain_error error;
@@ -50,7 +60,10 @@ int main(int argc, char **argv)
         double seconds = now() - start;
         struct rusage usage;
         getrusage(RUSAGE_SELF, &usage);
-        printf("%6d %9.2f %10.1f %8.2f %7s %12s J %.10g gap %.3g %%\n", n, seconds, (double)usage.ru_maxrss / 1024, seconds / before, "", flatgain_outcome_name(flatgain_result_outcome(result)), flatgain_result_cost(result, FLATGAIN_COST_GAIN), flatgain_result_gap_percent(result));
+        printf("%6d %9.2f %10.1f %8.2f %7s %12s J %.10g gap %.3g %%\n", n, seconds,
+               (double)usage.ru_maxrss / 1024, seconds / before, "",
+               flatgain_outcome_name(flatgain_result_outcome(result)),
+               flatgain_result_cost(result, FLATGAIN_COST_GAIN), flatgain_result_gap_percent(result));
         fflush(stdout);
         before = seconds;
         flatgain_result_free(result);

@@ -57,7 +57,8 @@ static const char *ways[WAYS] = {"Newton", "L-BFGS then Newton", "L-BFGS alone",
 
 int main(void)
 {
-    static const int shapes[][3] = {{4, 2, 2}, {10, 2, 3}, {20, 3, 3}, {20, 5, 6}, {30, 8, 8}, {20, 10, 10}, {50, 3, 3}, {40, 12, 12}};
+    static const int shapes[][3] = {{4, 2, 2},  {10, 2, 3},   {20, 3, 3}, {20, 5, 6},
+                                    {30, 8, 8}, {20, 10, 10}, {50, 3, 3}, {40, 12, 12}};
     setvbuf(stdout, NULL, _IOLBF, 0);
     printf("%4s %4s  %-20s %8s %10s %8s\n", "n", "q", "way", "costs", "ms", "solved");
     for (size_t s = 0; s < sizeof shapes / sizeof *shapes; s++) {
@@ -73,7 +74,8 @@ int main(void)
             struct fg_pattern pattern = free_pattern(&arena, m, p);
             struct fg_cost *cost = fg_cost_new(&plant, &pattern, &arena);
             struct fg_local *local = fg_local_new(q, &arena);
-            double *start = fg_arena_doubles(&arena, q), *theta = fg_arena_doubles(&arena, q), *best = fg_arena_doubles(&arena, q);
+            double *start = fg_arena_doubles(&arena, q), *theta = fg_arena_doubles(&arena, q),
+                   *best = fg_arena_doubles(&arena, q);
             fg_cost_margin(cost, 1e-6);
             bool stable = false;
             for (int attempt = 0; attempt < 30 && !stable; attempt++) {
@@ -91,11 +93,13 @@ int main(void)
                     if (w == 1)
                         fg_first_phase(cost, &pattern, 10 * q, &limits, theta, best, &evaluations);
                     if (w < 2) {
-                        struct fg_local_answer answer = fg_local_minimise(local, cost, &pattern, theta, &limits);
+                        struct fg_local_answer answer =
+                            fg_local_minimise(local, cost, &pattern, theta, &limits);
                         evaluations += answer.evaluations;
                         ends[w] = answer.end == FG_LOCAL_MINIMUM ? answer.J : INFINITY;
                     } else {
-                        nlopt_opt optimiser = nlopt_create(w == 2 ? NLOPT_LD_LBFGS : NLOPT_LD_SLSQP, (unsigned)q);
+                        nlopt_opt optimiser =
+                            nlopt_create(w == 2 ? NLOPT_LD_LBFGS : NLOPT_LD_SLSQP, (unsigned)q);
                         double value;
                         calls = 0;
                         nlopt_set_min_objective(optimiser, objective, cost);
@@ -119,7 +123,8 @@ int main(void)
             fg_arena_release(&arena);
         }
         for (int w = 0; w < WAYS; w++)
-            printf("%4d %4d  %-20s %8.0f %10.2f %5d/%d\n", n, q, ways[w], median(PLANTS, costs[w]), median(PLANTS, ms[w]), solved[w], PLANTS);
+            printf("%4d %4d  %-20s %8.0f %10.2f %5d/%d\n", n, q, ways[w], median(PLANTS, costs[w]),
+                   median(PLANTS, ms[w]), solved[w], PLANTS);
     }
     return 0;
 }

@@ -43,7 +43,8 @@ int main(int argc, char **argv)
         struct fg_model model;
         struct fg_benchmark benchmark;
         struct fg_scaled scaled;
-        if (fg_model_build(problem, &arena, &model, &error) || fg_benchmark(&model.benchmark, &arena, &benchmark, &error) ||
+        if (fg_model_build(problem, &arena, &model, &error) ||
+            fg_benchmark(&model.benchmark, &arena, &benchmark, &error) ||
             fg_scale(&model.law, &problem->pattern, &benchmark, &arena, &scaled, &error))
             return 1;
         struct fg_cost *cost = fg_cost_new(&scaled.plant, &scaled.pattern, &arena);

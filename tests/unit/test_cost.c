@@ -25,14 +25,25 @@ static double J_by_kronecker(const struct fg_plant *P, const double *K)
     ck_assert_int_eq(info, 0);
     double FC[64], A[64], Q[64], W[64], FV[16];
 #define FOR(i, c) for (int i = 0; i < (c); i++)
-    FOR(i, m) FOR(j, n) { FC[i + j * m] = 0; FOR(k, p) FC[i + j * m] += F[i + k * m] * FG_AT(P->C, k, j); }
-    FOR(i, m) FOR(j, p) { FV[i + j * m] = 0; FOR(k, p) FV[i + j * m] += F[i + k * m] * FG_AT(P->V, k, j); }
-    FOR(i, n) FOR(j, n) {
+    FOR(i, m) FOR(j, n)
+    {
+        FC[i + j * m] = 0;
+        FOR(k, p) FC[i + j * m] += F[i + k * m] * FG_AT(P->C, k, j);
+    }
+    FOR(i, m) FOR(j, p)
+    {
+        FV[i + j * m] = 0;
+        FOR(k, p) FV[i + j * m] += F[i + k * m] * FG_AT(P->V, k, j);
+    }
+    FOR(i, n) FOR(j, n)
+    {
         double a = FG_AT(P->A, i, j), q = FG_AT(P->Q, i, j), w = FG_AT(P->W, i, j);
-        FOR(k, m) {
+        FOR(k, m)
+        {
             a -= FG_AT(P->B, i, k) * FC[k + j * m];
             q -= FG_AT(P->N, i, k) * FC[k + j * m] + FG_AT(P->N, j, k) * FC[k + i * m];
-            FOR(l, m) {
+            FOR(l, m)
+            {
                 q += FC[k + i * m] * FG_AT(P->R, k, l) * FC[l + j * m];
                 FOR(h, p) w += FG_AT(P->B, i, k) * FV[k + h * m] * F[l + h * m] * FG_AT(P->B, j, l);
             }
@@ -43,9 +54,11 @@ static double J_by_kronecker(const struct fg_plant *P, const double *K)
     }
     double *big = calloc((size_t)N * N, sizeof(double)), x[64];
     int *piv = calloc((size_t)N, sizeof(int));
-    FOR(i, n) FOR(j, n) {
+    FOR(i, n) FOR(j, n)
+    {
         x[i + j * n] = -W[i + j * n];
-        FOR(k, n) FOR(l, n) {
+        FOR(k, n) FOR(l, n)
+        {
             double *e = &big[(i + j * n) + (size_t)(k + l * n) * N];
             *e = P->discrete ? A[i + k * n] * A[j + l * n] - (i == k && j == l)
                              : (j == l ? A[i + k * n] : 0) + (i == k ? A[j + l * n] : 0);
@@ -105,7 +118,8 @@ START_TEST(value_gradient_and_hessian)
                     continue;
                 ck_assert_double_eq_tol(g[k], (Jup - Jdown) / (2 * h), 1e-4 * (gmax + J));
                 for (int l = 0; l < q; l++)
-                    ck_assert_double_eq_tol(H[k + l * q], (up[l] - down[l]) / (2 * h), 2e-4 * Hmax + 1e-6 * J);
+                    ck_assert_double_eq_tol(H[k + l * q], (up[l] - down[l]) / (2 * h),
+                                            2e-4 * Hmax + 1e-6 * J);
             }
         }
         fg_arena_release(&arena);
