@@ -65,9 +65,9 @@ $(BUILD)/faults/libflatgain-refusing.a: $(BUILD)/libflatgain.a
 	objcopy $(foreach name,$(REDIRECT),--redefine-sym $(name)=refusing_$(name)) $@
 $(BUILD)/faults/test_memory: $(BUILD)/tests/faults/test_memory.o $(BUILD)/tests/faults/allocations.o $(BUILD)/faults/libflatgain-refusing.a
 	$(CC) $(LDFLAGS) -o $@ $^ $(PKG_LIBS) $(CHECK_LIBS)
-$(BUILD)/faults/%: $(BUILD)/tests/faults/%.o $(BUILD)/libflatgain.a
+$(BUILD)/faults/%: $(BUILD)/tests/faults/%.o $(BUILD)/tests/faults/sane.o $(BUILD)/libflatgain.a
 	@mkdir -p $(@D)
-	$(CC) $(LDFLAGS) -o $@ $< $(BUILD)/libflatgain.a $(PKG_LIBS) $(CHECK_LIBS)
+	$(CC) $(LDFLAGS) -o $@ $< $(BUILD)/tests/faults/sane.o $(BUILD)/libflatgain.a $(PKG_LIBS) $(CHECK_LIBS)
 
 test:
 	sh tests/run.sh

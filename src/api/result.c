@@ -5,23 +5,27 @@
 
 #include "write/write.h"
 
+enum { INTERNAL_ERROR = 70 }; /* docs/exit-status.md: what a missing result is told as */
+
 flatgain_outcome flatgain_result_outcome(const flatgain_result *result)
 {
-    return result->findings.outcome;
+    return result ? result->findings.outcome : FLATGAIN_NOT_FOUND;
 }
 
 int flatgain_result_exit_status(const flatgain_result *result)
 {
-    return result->findings.exit_status;
+    return result ? result->findings.exit_status : INTERNAL_ERROR;
 }
 
 const double *flatgain_result_gain(const flatgain_result *result)
 {
-    return result->findings.has_gain ? result->findings.K_rows : NULL;
+    return result && result->findings.has_gain ? result->findings.K_rows : NULL;
 }
 
 double flatgain_result_cost(const flatgain_result *result, flatgain_cost which)
 {
+    if (!result)
+        return NAN;
     const struct fg_findings *f = &result->findings;
     switch (which) {
     case FLATGAIN_COST_GAIN:
@@ -40,17 +44,17 @@ double flatgain_result_cost(const flatgain_result *result, flatgain_cost which)
 
 double flatgain_result_gap_percent(const flatgain_result *result)
 {
-    return result->findings.gap_percent;
+    return result ? result->findings.gap_percent : NAN;
 }
 
 int flatgain_result_lqg_attained(const flatgain_result *result)
 {
-    return result->findings.lqg_attained;
+    return result && result->findings.lqg_attained;
 }
 
 double flatgain_result_residual(const flatgain_result *result)
 {
-    return result->findings.search.residual;
+    return result ? result->findings.search.residual : NAN;
 }
 
 static flatgain_status give(struct fg_text *made, char **text, size_t *length)

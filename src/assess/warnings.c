@@ -280,21 +280,47 @@ static void warn_search(struct fg_assembly *a)
 /* J is zero to rounding when it is this part of what the weights and disturbances could make it. */
 static const double ZERO_COST = 1e-13;
 
-static void warn_zero(struct fg_assembly *a)
+static bool is_zero_cost(const struct fg_assembly *a)
 {
-    const struct fg_findings *f = a->findings;
     double fastest = a->model.law.discrete ? 1 : a->benchmark.fastest, seen = 0, reached = 0;
     for (int i = 0; i < a->problem->n; i++) {
         seen = fmax(seen, FG_AT(a->problem->Q, i, i));
         reached = fmax(reached, FG_AT(a->problem->W, i, i));
     }
-    if (!f->has_gain || !f->stable || !(reached > 0) ||
-        !(fabs(f->cost) <= ZERO_COST * seen * reached / fastest))
+    return reached > 0 && fabs(a->findings->cost) <= ZERO_COST * seen * reached / fastest;
+}
+
+static void warn_zero(struct fg_assembly *a)
+{
+    const struct fg_findings *f = a->findings;
+    if (!f->has_gain || !f->stable || !is_zero_cost(a))
         return;
     fg_warn(
         a->findings, "zero-cost",
         "The cost is zero but for rounding: no disturbance reaches anything that the weights see, so nothing "
         "tells good gains from bad ones. Check Q and the disturbance.");
+}
+
+/* The search works in units of its own. J of its gain is computed once more from the user's matrices; the two
+ * differ by less than 1e-4 on every model in tests/cases whose cost is not zero. */
+static const double DOUBT = 0.01;
+
+static void warn_doubt(struct fg_assembly *a)
+{
+    const struct fg_findings *f = a->findings;
+    if (!f->has_gain || !f->stable || f->outcome == FLATGAIN_JUDGED || is_zero_cost(a))
+        return;
+    double again = fg_cost_value(a->cost, f->K);
+    if (fabs(again - f->cost) <= DOUBT * fabs(f->cost))
+        return;
+    fg_warn(a->findings, "cost-uncertain",
+            fg_arena_text(a->arena,
+                          "Rounding decides in this problem: the search found the cost %s, but computed from "
+                          "your matrices %s%s. Do not use the gain; choose units in which the entries of the "
+                          "matrices come closer to 1.",
+                          fg_words_number(a->arena, f->cost, 5),
+                          isfinite(again) ? "it is " : "the loop does not even look stable",
+                          isfinite(again) ? fg_words_number(a->arena, again, 5) : ""));
 }
 
 static void warn_disturbance(struct fg_assembly *a)
@@ -330,6 +356,7 @@ static void warn_comparisons(struct fg_assembly *a)
 
 void fg_warnings_fill(struct fg_assembly *a)
 {
+    warn_doubt(a);
     warn_boundary(a);
     warn_search(a);
     warn_bounds(a);

@@ -44,13 +44,14 @@ struct null_space {
     double complex *left, *right; /* n x r */
 };
 
-/* Singular values of a complex a x b matrix (destroyed), descending; false when the iteration failed. */
+/* Singular values of a complex a x b matrix (destroyed), descending; false when the iteration failed or an
+ * entry is not finite (X'F X overflows for weights of 1e300). */
 static bool singular_values(struct fg_arena *scratch, int a, int b, double complex *at, double *values)
 {
     int one = 1, info = 0, small = a < b ? a : b, room = 3 * (a + b) + 8;
     double complex *work = fg_arena_get(scratch, (size_t)room * sizeof *work), none[1];
     double *rwork = fg_arena_doubles(scratch, 5 * (size_t)small + 8);
-    if (scratch->failed)
+    if (scratch->failed || !fg_all_finite(2 * (size_t)a * (size_t)b, (const double *)at))
         return false;
     zgesvd_("N", "N", &a, &b, (double *)at, &a, values, (double *)none, &one, (double *)none, &one,
             (double *)work, &room, rwork, &info, 1, 1);

@@ -137,25 +137,25 @@ flatgain_status flatgain_problem_from_matrices(const flatgain_matrices *matrices
 
 int flatgain_problem_inputs(const flatgain_problem *problem)
 {
-    return problem->m;
+    return problem ? problem->m : 0;
 }
 
 int flatgain_problem_outputs(const flatgain_problem *problem)
 {
-    return problem->p;
+    return problem ? problem->p : 0;
 }
 
 int flatgain_problem_states(const flatgain_problem *problem)
 {
-    return problem->n;
+    return problem ? problem->n : 0;
 }
 
 const char *flatgain_problem_title(const flatgain_problem *problem)
 {
-    return problem->title;
+    return problem ? problem->title : "";
 }
 
 const double *flatgain_problem_today(const flatgain_problem *problem)
 {
-    return problem->today_rows;
+    return problem ? problem->today_rows : NULL;
 }
