@@ -106,7 +106,7 @@ static void subproblem(struct fg_local *l, int count, double radius)
             along = lowest < -tiny ? sqrt(fmax(0, radius * radius - have * have)) : 0;
         } else {
             for (int i = 0; i < 80 && high - low > 1e-12 * high; i++) {
-                /* secular equation 1/radius - 1/|s| = 0, bisection safeguards Newton's step */
+                /* |s(lambda)| falls: bisection; a radius met to 0.1 % is met */
                 double have = length_at(l, count, lambda = 0.5 * (low + high));
                 if (have > radius)
                     low = lambda;
@@ -299,7 +299,7 @@ static struct fg_local_answer descend(struct fg_local *l, struct fg_cost *cost,
         if (ratio < 0.25)
             radius = 0.25 * size;
         else if (ratio > 0.75 && size > 0.9 * radius)
-            radius *= 3;
+            radius *= isfinite(blocked) ? 2 : 3; /* carefully once the boundary was met */
     }
 }
 
@@ -308,7 +308,8 @@ struct fg_local_answer fg_local_minimise(struct fg_local *l, struct fg_cost *cos
                                          const struct fg_local_limits *limits)
 {
     struct fg_local_answer answer = descend(l, cost, pattern, theta, limits);
-    if (answer.J <= limits->bound * (1 + MEETS_BOUND))
+    bool stuck = answer.end == FG_LOCAL_STALLED || answer.end == FG_LOCAL_STOPPED;
+    if (stuck && fabs(answer.J - limits->bound) <= MEETS_BOUND * limits->bound)
         answer.end = FG_LOCAL_MINIMUM;
     return answer;
 }

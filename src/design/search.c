@@ -301,8 +301,10 @@ static void report(struct shared *shared, int count, struct fg_search_answer *an
     answer->abscissa = r->abscissa * scaled->rate;
     if (r->stabilised) {
         answer->cost = r->local.J;
-        answer->residual = r->local.residual;
-        answer->smallest_curvature = r->local.smallest;
+        if (answer->end != FG_SEARCH_BOUNDARY && answer->end != FG_SEARCH_UNBOUNDED) {
+            answer->residual = r->local.residual; /* of a minimum; there is none otherwise */
+            answer->smallest_curvature = r->local.smallest;
+        }
         answer->at_bound = r->local.at_bound;
     }
 }

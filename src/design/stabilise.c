@@ -92,7 +92,8 @@ static bool by_shift(struct fg_stabiliser *s, double *theta, double margin,
 }
 
 /* Weak Wolfe line search by bisection (Lewis, Overton 2013, alg. 2.6); false when no step was found. */
-static bool line_search(struct fg_stabiliser *s, double *theta, double *value, long *evaluations)
+static bool line_search(struct fg_stabiliser *s, double *theta, double margin, double *value,
+                        long *evaluations)
 {
     int q = s->pattern->count;
     double slope = 0, low = 0, high = INFINITY, t = 1;
@@ -111,7 +112,9 @@ static bool line_search(struct fg_stabiliser *s, double *theta, double *value, l
             double new_slope = 0;
             for (int k = 0; k < q; k++)
                 new_slope += s->new_gradient[k] * s->direction[k];
-            if (new_slope >= 0.5 * slope || step == LINE_STEPS - 1 || t > 1e6) {
+            /* a stabilising step ends the search: where the abscissa falls for ever, the next doubling would
+             * only lead to a huge gain */
+            if (new_slope >= 0.5 * slope || step == LINE_STEPS - 1 || enough(s, now, margin)) {
                 *value = now;
                 return true;
             }
@@ -177,7 +180,7 @@ static bool directly(struct fg_stabiliser *s, double *theta, double margin,
             slope += s->direction[k] * s->gradient[k];
         }
         double before = value;
-        if (!(slope < 0) || !line_search(s, theta, &value, evaluations)) {
+        if (!(slope < 0) || !line_search(s, theta, margin, &value, evaluations)) {
             if (steepest)
                 break;
             reset_inverse(s);

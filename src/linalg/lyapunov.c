@@ -59,6 +59,19 @@ static void solve_blocks(bool discrete, int p, int q, const double *a, int lda, 
         r[0] /= discrete ? a[0] * b[0] - 1 : a[0] + b[0];
         return;
     }
+    if (p * q == 2) {
+        /* [d e; f d] with d = t or t' and e f < 0 as dgees leaves it: the determinant d^2 - e f is a sum of
+         * squares, so Cramer's rule loses nothing */
+        const double *two = p == 2 ? a : b;
+        int ld = p == 2 ? lda : ldb;
+        double one = p == 2 ? b[0] : a[0], factor = discrete ? one : 1, shift = discrete ? -1 : one;
+        double d0 = factor * two[0] + shift, e = factor * two[ld], f = factor * two[1],
+               d1 = factor * two[ld + 1] + shift;
+        double determinant = d0 * d1 - e * f, r0 = r[0];
+        r[0] = (r0 * d1 - e * r[1]) / determinant;
+        r[1] = (d0 * r[1] - f * r0) / determinant;
+        return;
+    }
     double M[16] = {0};
     int k = p * q;
     for (int j = 0; j < q; j++)

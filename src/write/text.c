@@ -123,7 +123,7 @@ static void put_poles(const struct fg_page *page, const struct fg_findings *f, c
                      fg_text_number(pole->speed == 0 ? 0 : decay_time(f->problem, pole), 3, false, number),
                      discrete ? "steps" : f->problem->time_unit);
         else
-            snprintf(text, sizeof text, "grows");
+            snprintf(text, sizeof text, (discrete ? pole->speed == 1 : pole->re == 0) ? "stays" : "grows");
         size_t length = strlen(text);
         if (text[length - 1] == ' ')
             text[length - 1] = '\0';
