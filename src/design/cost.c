@@ -8,8 +8,10 @@
 #include "linalg/lapack.h"
 #include "linalg/lyapunov.h"
 
-/* ||I + K D|| ||(I + K D)^-1|| above this: the loop is (nearly) ill posed and J counts as infinite. */
-static const double ILL_POSED = 1e10;
+/* tr(|(I + K D)^-1| (I + |K| |D|)) above this: the loop is (nearly) ill posed and J counts as infinite. It
+ * measures what cancels in I + K D (with one input the norm of it times the norm of its inverse is always 1)
+ * and does not depend on units. Beyond it the last digits of K decide where the slower poles are. */
+static const double ILL_POSED = 1e8;
 
 static int never(const double *re, const double *im)
 {
@@ -143,26 +145,23 @@ static bool close_algebraic_loop(struct fg_cost *c)
     }
     struct fg_matrix LU = c->scratch_mm;
     fg_multiply('N', 'N', 1, K, c->plant->D, 0, LU);
-    double norm = 0, inverse_norm = 0;
     for (int i = 0; i < m; i++) {
         FG_AT(LU, i, i) += 1;
-        double sum = 0;
-        for (int j = 0; j < m; j++) {
-            sum += fabs(FG_AT(LU, i, j));
+        for (int j = 0; j < m; j++)
             FG_AT(c->a, i, j) = i == j;
-        }
-        norm = fmax(norm, sum);
     }
     dgesv_(&m, &m, LU.at, &m, c->pivots, c->a.at, &m, &info);
     if (info != 0)
         return false;
-    for (int i = 0; i < m; i++) {
-        double sum = 0;
-        for (int j = 0; j < m; j++)
-            sum += fabs(FG_AT(c->a, i, j));
-        inverse_norm = fmax(inverse_norm, sum);
-    }
-    if (!(norm * inverse_norm < ILL_POSED))
+    double cancelled = 0;
+    for (int i = 0; i < m; i++)
+        for (int j = 0; j < m; j++) {
+            double terms = i == j;
+            for (int k = 0; k < p; k++)
+                terms += fabs(FG_AT(K, j, k) * FG_AT(c->plant->D, k, i));
+            cancelled += fabs(FG_AT(c->a, i, j)) * terms;
+        }
+    if (!(cancelled < ILL_POSED * m))
         return false;
     fg_multiply('N', 'N', 1, c->a, K, 0, c->F);
     fg_multiply('N', 'N', -1, c->plant->D, c->F, 0, c->d);
