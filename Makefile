@@ -69,6 +69,15 @@ $(BUILD)/faults/%: $(BUILD)/tests/faults/%.o $(BUILD)/tests/faults/sane.o $(BUIL
 	@mkdir -p $(@D)
 	$(CC) $(LDFLAGS) -o $@ $< $(BUILD)/tests/faults/sane.o $(BUILD)/libflatgain.a $(PKG_LIBS) $(CHECK_LIBS)
 
+# Speed programs: tests/bench/bench_*.c, driven by tests/bench/run.sh.
+BENCH := $(patsubst tests/bench/%.c,$(BUILD)/bench/%,$(sort $(wildcard tests/bench/bench_*.c)))
+BENCH_HELP = $(BUILD)/tests/bench/random_problem.o $(BUILD)/tests/unit/plants.o $(BUILD)/tests/unit/cases.o
+$(BUILD)/bench/%: $(BUILD)/tests/bench/%.o $(BENCH_HELP) $(BUILD)/libflatgain.a
+	@mkdir -p $(@D)
+	$(CC) $(LDFLAGS) -o $@ $< $(BENCH_HELP) $(BUILD)/libflatgain.a $(PKG_LIBS)
+bench: $(BENCH)
+	BUILD=$(BUILD) sh tests/bench/run.sh
+
 test:
 	sh tests/run.sh
 

@@ -40,7 +40,7 @@ step() { # NAME COMMAND...
     count "$name" "$p" "$f"
 }
 
-make -s -j "$jobs" all lib tests >"$logs/build.log" 2>&1 || {
+make -s -j "$jobs" all lib tests faults >"$logs/build.log" 2>&1 || {
     tail -n 40 "$logs/build.log"
     echo "The build failed."
     echo "0 passed, 1 failed"
@@ -51,7 +51,8 @@ make -s -j "$jobs" all lib tests >"$logs/build.log" 2>&1 || {
 programs=$(for source in tests/unit/test_*.c tests/faults/test_*.c; do
     [ -e "$source" ] && basename "$source" .c
 done)
-echo "$programs" | xargs -P "$jobs" -I{} sh -c "build/tests/{} >$logs/{}.log 2>&1; echo \$? >$logs/{}.status"
+echo "$programs" | xargs -P "$jobs" -I{} sh -c \
+    "p=build/tests/{}; [ -x \$p ] || p=build/faults/{}; \$p >$logs/{}.log 2>&1; echo \$? >$logs/{}.status"
 for name in $programs; do
     line=$(grep -E '^[0-9]+%: Checks:' "$logs/$name.log" | tail -n 1)
     checks=$(echo "$line" | sed -n 's/.*Checks: \([0-9]*\).*/\1/p')

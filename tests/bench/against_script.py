@@ -1,11 +1,15 @@
-"""flatgain against the script a user would write instead (script_tuner.py), same plants, same start, in one
-run: median ratio of seconds, for the same local search and for the whole of `tune` (8 or more starts,
-benchmarks, modes, margins). The script's time leaves out starting Python and importing SciPy.
-Usage: against_script.py BENCH_TUNE"""
+"""flatgain against the script a user would write instead (script_tuner.py), same plants, in one run, median
+ratios of seconds:
+  search    one local search from K = 0, both inside a running process (no start of Python, no import of SciPy)
+  command   `flatgain tune FILE` (8 starts or more, benchmarks, modes, margins, report) against
+            `python3 script_tuner.py FILE` with as many starts
+Usage: against_script.py BENCH_TUNE FLATGAIN"""
 import json
+import os
 import subprocess
 import sys
 import tempfile
+import time
 
 import numpy as np
 
@@ -27,27 +31,42 @@ def plant(random, n, m, p):
     }
 
 
+def seconds_of(command):
+    """Median wall time of a whole command over three runs, and what it printed."""
+    times = []
+    for _ in range(3):
+        start = time.perf_counter()
+        out = subprocess.run(command, capture_output=True, text=True, check=True).stdout
+        times.append(time.perf_counter() - start)
+    return float(np.median(times)), out
+
+
 def main():
+    script = os.path.join(os.path.dirname(os.path.abspath(__file__)), "script_tuner.py")
     worst = 0
-    print(f"{'n':>4} {'m x p':>6} {'script ms':>10} {'local ms':>9} {'ratio':>7} {'tune ms':>9} {'ratio':>7} {'costs':>6} {'same J to':>10}  target")
+    print(f"{'n':>4} {'m x p':>6} | {'script ms':>10} {'search ms':>10} {'ratio':>6} {'costs':>6} {'same J to':>10} | {'script s':>9} {'tune s':>8} {'ratio':>6} | target")
     for n, target in TARGETS.items():
         random = np.random.default_rng(n)
         m, p = (2, 2) if n < 20 else (3, 3)
-        rows, agree = [], 0.0
-        for _ in range(PLANTS):
+        rows = []
+        for index in range(PLANTS):
             problem = plant(random, n, m, p)
             J, _, seconds = min((tune(problem) for _ in range(3 if n <= 20 else 1)), key=lambda answer: answer[2])
             with tempfile.NamedTemporaryFile("w", suffix=".yaml") as file:
                 json.dump(problem, file)
                 file.flush()
                 out = subprocess.run([sys.argv[1], file.name], capture_output=True, text=True, check=True).stdout.split()
-            agree = max(agree, abs(float(out[0]) - J) / J)
-            rows.append((seconds, float(out[1]), float(out[4]), float(out[2])))
-        script, local, whole, costs = (float(np.median([row[i] for row in rows])) for i in range(4))
-        ratio = float(np.median([row[0] / row[1] for row in rows]))
-        ratio_whole = float(np.median([row[0] / row[2] for row in rows]))
-        worst = max(worst, agree)
-        print(f"{n:4d} {m} x {p:<2d} {1e3 * script:10.2f} {1e3 * local:9.3f} {ratio:7.0f} {1e3 * whole:9.2f} {ratio_whole:7.1f} {costs:6.0f} {agree:10.1e}  {target}")
+                row = [seconds, float(out[1]), float(out[2]), abs(float(out[0]) - J) / J, np.nan, np.nan]
+                if index == 0:
+                    result = json.loads(seconds_of([sys.argv[2], "tune", "--json", file.name])[1])
+                    starts = result["search"]["starts"]
+                    row[4] = seconds_of(["/usr/bin/python3", script, file.name, str(starts)])[0]
+                    row[5] = seconds_of([sys.argv[2], "tune", file.name])[0]
+            rows.append(row)
+        table = np.array(rows)
+        worst = max(worst, table[:, 3].max())
+        ratio = float(np.median(table[:, 0] / table[:, 1]))
+        print(f"{n:4d} {m} x {p:<2d} | {1e3 * np.median(table[:, 0]):10.2f} {1e3 * np.median(table[:, 1]):10.3f} {ratio:6.0f} {np.median(table[:, 2]):6.0f} {table[:, 3].max():10.1e} | {table[0, 4]:9.2f} {table[0, 5]:8.3f} {table[0, 4] / table[0, 5]:6.0f} | {target}")
     print(f"largest relative difference of the optimum: {worst:.1e}")
 
 

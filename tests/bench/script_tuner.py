@@ -1,6 +1,9 @@
 """What a user would write instead: static gain by SciPy's BFGS with the analytic gradient and SciPy's Lyapunov
-solver, from K = 0, for a continuous plant stable without control. Works on the problem files of
-against_script.py. As a module: tune(problem) -> (J, K, seconds)."""
+solver, for a continuous plant stable without control. Works on the problem files of against_script.py.
+As a module: tune(problem) -> (J, K, seconds) from K = 0. As a command: script_tuner.py FILE [STARTS], from K = 0
+and random gains, prints the best J and K."""
+import json
+import sys
 import time
 
 import numpy as np
@@ -8,7 +11,7 @@ from scipy.linalg import solve_continuous_lyapunov
 from scipy.optimize import minimize
 
 
-def tune(problem):
+def tune(problem, start_gain=None):
     plant, weights = problem["plant"], problem["weights"]
     A, B, C = (np.array(plant[key]) for key in "ABC")
     Q, R = (np.array(weights[key]) for key in "QR")
@@ -26,7 +29,18 @@ def tune(problem):
         return np.trace(P @ W), gradient.ravel()
 
     start = time.perf_counter()
-    J0 = cost(np.zeros(shape[0] * shape[1]))[0]
+    k0 = np.zeros(shape[0] * shape[1]) if start_gain is None else start_gain
+    J0 = cost(k0)[0]
     scaled = lambda k: tuple(part / J0 for part in cost(k))
-    found = minimize(scaled, np.zeros(shape[0] * shape[1]), jac=True, method="BFGS", options={"gtol": 1e-9, "maxiter": 2000})
+    found = minimize(scaled, k0, jac=True, method="BFGS", options={"gtol": 1e-9, "maxiter": 2000})
     return found.fun * J0, found.x.reshape(shape), time.perf_counter() - start
+
+
+if __name__ == "__main__":
+    given = json.load(open(sys.argv[1], encoding="utf-8"))
+    rng = np.random.default_rng(1)
+    gains = len(given["plant"]["B"][0]) * len(given["plant"]["C"])
+    starts = int(sys.argv[2]) if len(sys.argv) > 2 else 8
+    answers = [tune(given, None if i == 0 else 0.1 * rng.standard_normal(gains)) for i in range(starts)]
+    J, K, _ = min(answers, key=lambda answer: answer[0])
+    print(J, K.tolist())
