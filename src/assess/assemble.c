@@ -5,7 +5,7 @@
 
 #include "assess/assembly.h"
 #include "assess/margins.h"
-#include "linalg/lapack.h"
+#include "linalg/factor.h"
 
 /* ---- before any gain ------------------------------------------------------------------------- */
 
@@ -169,7 +169,7 @@ static void list_hidden(struct fg_assembly *a)
 static bool close_loop(struct fg_assembly *a, const double *K, struct fg_matrix Acl)
 {
     const struct fg_plant *plant = &a->model.law;
-    int m = plant->m, p = plant->p, info = 0;
+    int m = plant->m, p = plant->p;
     struct fg_matrix gain = {m, p, (double *)K};
     struct fg_matrix F = fg_matrix_copy(a->arena, gain);
     struct fg_matrix I = fg_matrix_identity(a->arena, m);
@@ -181,8 +181,7 @@ static bool close_loop(struct fg_assembly *a, const double *K, struct fg_matrix 
         fg_multiply('N', 'N', 1, gain, plant->D, 1, I);
         if (!fg_all_finite((size_t)m * (size_t)m, I.at))
             return false;
-        dgesv_(&m, &p, I.at, &m, pivots, F.at, &m, &info);
-        if (info != 0 || !fg_all_finite((size_t)m * (size_t)p, F.at))
+        if (!fg_solve(I, pivots, F) || !fg_all_finite((size_t)m * (size_t)p, F.at))
             return false;
     }
     memcpy(Acl.at, plant->A.at, (size_t)plant->n * (size_t)plant->n * sizeof(double));

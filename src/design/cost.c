@@ -137,7 +137,7 @@ void fg_cost_shift(struct fg_cost *cost, double shift)
 /* a = (I + K D)^-1, F = a K, d = I - D F = (I + D K)^-1; false when (nearly) ill posed. */
 static bool close_algebraic_loop(struct fg_cost *c)
 {
-    int m = c->m, p = c->p, info = 0;
+    int m = c->m, p = c->p;
     struct fg_matrix K = {m, p, c->K};
     if (!c->has_D) {
         memcpy(c->F.at, c->K, (size_t)m * p * sizeof(double));
@@ -150,8 +150,7 @@ static bool close_algebraic_loop(struct fg_cost *c)
         for (int j = 0; j < m; j++)
             FG_AT(c->a, i, j) = i == j;
     }
-    dgesv_(&m, &m, LU.at, &m, c->pivots, c->a.at, &m, &info);
-    if (info != 0)
+    if (!fg_solve(LU, c->pivots, c->a))
         return false;
     double cancelled = 0;
     for (int i = 0; i < m; i++)

@@ -37,3 +37,21 @@ struct fg_matrix fg_factor_at(struct fg_arena *arena, struct fg_matrix S, double
     fg_arena_release(&scratch);
     return H;
 }
+
+bool fg_solve(struct fg_matrix A, int *pivots, struct fg_matrix B)
+{
+    const double one = 1;
+    int n = A.rows, k = B.cols, info = 0;
+    dgetrf_(&n, &n, A.at, &n, pivots, &info);
+    if (info != 0)
+        return false;
+    for (int i = 0; i < n; i++) /* pivots count from 1 */
+        for (int j = 0; j < k && pivots[i] != i + 1; j++) {
+            double held = FG_AT(B, i, j);
+            FG_AT(B, i, j) = FG_AT(B, pivots[i] - 1, j);
+            FG_AT(B, pivots[i] - 1, j) = held;
+        }
+    dtrsm_("L", "L", "N", "U", &n, &k, &one, A.at, &n, B.at, &n, 1, 1, 1, 1);
+    dtrsm_("L", "U", "N", "N", &n, &k, &one, A.at, &n, B.at, &n, 1, 1, 1, 1);
+    return true;
+}
