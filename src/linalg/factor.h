@@ -13,9 +13,9 @@ struct fg_matrix fg_factor(struct fg_arena *arena, struct fg_matrix S);
 struct fg_matrix fg_factor_at(struct fg_arena *arena, struct fg_matrix S, double tolerance);
 
 /* B = A^-1 B for A n x n (its LU factors afterwards) and B n x k; pivots n. False when A is singular.
- * LAPACK's dgetrf, then dtrsm, instead of dgesv: OpenBLAS 0.3.21 hands every dgesv and dgetrs, even of 2 x 2, to
- * its thread pool unless the program has set it to one thread. Measured: 6 to 12 us instead of 0.4 alone, and 300
- * times slower when six threads call it at once. */
+ * LAPACK's dgetrf, then dtrsm, instead of dgesv: OpenBLAS 0.3.21 hands every dgesv and dgetrs, even of 2 x 2,
+ * to its thread pool unless the program has set it to one thread. Measured: 6 to 12 us instead of 0.4 alone,
+ * and 300 times slower when six threads call it at once. */
 bool fg_solve(struct fg_matrix A, int *pivots, struct fg_matrix B);
 
 #endif
