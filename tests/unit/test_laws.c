@@ -270,6 +270,31 @@ START_TEST(feedthrough)
 }
 END_TEST
 
+/* Regression. With one input ||I + K D|| ||(I + K D)^-1|| is 1 however close to ill posed the loop is, so
+ * these plants, which no gain stabilises, came out as tuned (one with J = 0) at 1 + k D = 1e-15, where
+ * rounding puts the slower poles anywhere. No gain from 1e-7 to 1e7 of either sign stabilises them. */
+START_TEST(ill_posed_with_one_input)
+{
+    random_seed(1);
+    for (int trial = 0; trial <= 1218; trial++) {
+        struct fg_plant plant = random_plant(&arena, trial);
+        if (trial == 138 || trial == 498 || trial == 1218) {
+            struct outcome o = tuned(&plant);
+            ck_assert_msg(o.outcome == FLATGAIN_NOT_FOUND || o.outcome == FLATGAIN_IMPOSSIBLE,
+                          "trial %d: %s, J %g", trial, flatgain_outcome_name(o.outcome), o.J);
+            for (double size = -7; size < 7; size += 0.001)
+                for (int sign = -1; sign <= 1; sign += 2) {
+                    double k = sign * pow(10, size);
+                    ck_assert(isinf(independent_cost(&plant, &k)));
+                }
+            double near = -(1 + 1e-13) / plant.D.at[0];
+            ck_assert(isnan(judged(&plant, &near).J));
+        }
+        fg_arena_release(&arena);
+    }
+}
+END_TEST
+
 /* The transposed problem (transforms.h): K' instead of K, the same J and, since the best controller is
  * transposed as well, the same LQG cost. Discrete with N = 0. */
 START_TEST(dual_discrete)
@@ -342,6 +367,7 @@ int main(void)
     tcase_add_test(tests, units);
     tcase_add_test(tests, size_of_weights);
     tcase_add_test(tests, feedthrough);
+    tcase_add_test(tests, ill_posed_with_one_input);
     tcase_add_test(tests, dual_discrete);
     tcase_add_test(tests, dual_continuous);
     suite_add_tcase(suite, tests);
