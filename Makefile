@@ -1,7 +1,7 @@
 # make            build/flatgain, build/libflatgain.a, build/libflatgain.so
 # make test       everything tests/run.sh runs (it also installs what is missing)
 # make bench      speed figures as ratios in one run
-# make install    PREFIX=/usr/local DESTDIR=
+# make install    PREFIX=/usr/local DESTDIR=, make uninstall
 # Variants: make BUILD=build/asan SANITIZE=address,undefined
 CC ?= cc
 PREFIX ?= /usr/local
@@ -23,7 +23,7 @@ CLI_OBJ := $(CLI_SRC:%.c=$(BUILD)/%.o)
 TEST_SRC := $(sort $(wildcard tests/unit/test_*.c))
 TESTS := $(TEST_SRC:tests/unit/%.c=$(BUILD)/tests/%)
 
-.PHONY: all lib tests faults test bench install format clean
+.PHONY: all lib tests faults test bench install uninstall format clean
 all: $(BUILD)/flatgain $(BUILD)/libflatgain.so
 lib: $(BUILD)/libflatgain.a $(BUILD)/libflatgain.so
 tests: $(TESTS)
@@ -37,7 +37,7 @@ $(BUILD)/libflatgain.a: $(LIB_OBJ)
 	$(AR) rcs $@ $^
 
 $(BUILD)/libflatgain.so: $(LIB_OBJ)
-	$(CC) $(LDFLAGS) -shared -Wl,-soname,libflatgain.so.0 -o $@ $^ $(PKG_LIBS)
+	$(CC) $(LDFLAGS) -shared -Wl,-soname,$(SONAME) -o $@ $^ $(PKG_LIBS)
 
 $(BUILD)/flatgain: $(CLI_OBJ) $(BUILD)/libflatgain.a
 	$(CC) $(LDFLAGS) -o $@ $(CLI_OBJ) $(BUILD)/libflatgain.a $(PKG_LIBS)
@@ -80,6 +80,24 @@ bench: $(BENCH)
 
 test:
 	sh tests/run.sh
+
+# The library has no users yet whose binaries could break, so its interface is number 0.
+SONAME = libflatgain.so.0
+VERSION = $(shell sed -n 's/^\#define FLATGAIN_VERSION "\(.*\)"/\1/p' include/flatgain.h)
+TO = $(DESTDIR)$(PREFIX)
+install: $(BUILD)/flatgain $(BUILD)/libflatgain.a $(BUILD)/libflatgain.so
+	install -d $(TO)/bin $(TO)/include $(TO)/lib/pkgconfig
+	install -m 755 $(BUILD)/flatgain $(TO)/bin/flatgain
+	install -m 644 include/flatgain.h $(TO)/include/flatgain.h
+	install -m 644 $(BUILD)/libflatgain.a $(TO)/lib/libflatgain.a
+	install -m 755 $(BUILD)/libflatgain.so $(TO)/lib/$(SONAME)
+	ln -sf $(SONAME) $(TO)/lib/libflatgain.so
+	sed 's|@PREFIX@|$(PREFIX)|; s|@VERSION@|$(VERSION)|; s|@LIBS@|$(PKG_LIBS)|' src/api/flatgain.pc.in >$(TO)/lib/pkgconfig/flatgain.pc
+	chmod 644 $(TO)/lib/pkgconfig/flatgain.pc
+
+uninstall:
+	rm -f $(TO)/bin/flatgain $(TO)/include/flatgain.h $(TO)/lib/libflatgain.a $(TO)/lib/libflatgain.so \
+		$(TO)/lib/$(SONAME) $(TO)/lib/pkgconfig/flatgain.pc
 
 format:
 	clang-format -i $(shell git ls-files '*.c' '*.h')

@@ -74,9 +74,10 @@ flatgain_status flatgain_result_text(const flatgain_result *result, const flatga
 {
     struct fg_text made = {0};
     flatgain_style plain = {0};
+    if (text)
+        *text = NULL;
     if (!result || !text)
         return FLATGAIN_BAD_ARGUMENT;
-    *text = NULL;
     fg_write_text(&result->findings, style ? style : &plain, &made);
     return give(&made, text, length);
 }
@@ -86,9 +87,10 @@ flatgain_status flatgain_result_json(const flatgain_result *result, const flatga
 {
     struct fg_text made = {0};
     flatgain_style plain = {0};
+    if (text)
+        *text = NULL;
     if (!result || !text)
         return FLATGAIN_BAD_ARGUMENT;
-    *text = NULL;
     if (!fg_write_json(&result->findings, style ? style : &plain, &made))
         made.failed = true;
     return give(&made, text, length);

@@ -117,9 +117,10 @@ static flatgain_status fill(struct flatgain_problem *problem, const flatgain_mat
 flatgain_status flatgain_problem_from_matrices(const flatgain_matrices *matrices, flatgain_problem **problem,
                                                flatgain_error *error)
 {
+    if (problem)
+        *problem = NULL;
     if (!problem || !matrices)
         return fg_fail(error, FLATGAIN_BAD_ARGUMENT, "matrices or problem is NULL; expected both");
-    *problem = NULL;
     flatgain_status status = misuse(matrices, error);
     if (status != FLATGAIN_OK)
         return status;

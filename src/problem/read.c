@@ -305,9 +305,10 @@ static flatgain_status parse(const char *text, size_t length, const char *name, 
 flatgain_status flatgain_problem_parse(const char *text, size_t length, const char *name, const char *folder,
                                        flatgain_problem **problem, flatgain_error *error)
 {
+    if (problem)
+        *problem = NULL;
     if (!problem || (!text && length))
         return fg_fail(error, FLATGAIN_BAD_ARGUMENT, "text or problem is NULL; expected both");
-    *problem = NULL;
     struct flatgain_problem *made = fg_problem_new();
     if (!made)
         return fg_no_memory(error);
@@ -325,9 +326,10 @@ flatgain_status flatgain_problem_parse(const char *text, size_t length, const ch
 
 flatgain_status flatgain_problem_read(const char *path, flatgain_problem **problem, flatgain_error *error)
 {
+    if (problem)
+        *problem = NULL;
     if (!path || !problem)
         return fg_fail(error, FLATGAIN_BAD_ARGUMENT, "path or problem is NULL; expected both");
-    *problem = NULL;
     char reason[FG_QUOTE_SIZE], *text;
     size_t length;
     flatgain_status status = fg_source_read(path, &text, &length, reason);

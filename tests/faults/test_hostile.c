@@ -239,6 +239,8 @@ START_TEST(options)
 }
 END_TEST
 
+static void *somewhere = &somewhere; /* what a failed call must overwrite with NULL */
+
 /* Each matrix missing, then each of the other pointers of the whole interface. */
 START_TEST(missing_pointers)
 {
@@ -265,13 +267,19 @@ START_TEST(missing_pointers)
     double gain[NU * NY] = {0};
     char *text;
     const flatgain_status bad = FLATGAIN_BAD_ARGUMENT;
+    other = somewhere;
     ck_assert_int_eq(flatgain_problem_from_matrices(NULL, &other, &error), bad);
+    ck_assert_ptr_null(other);
     ck_assert_int_eq(flatgain_problem_from_matrices(&plant.matrices, NULL, &error), bad);
     ck_assert_int_eq(flatgain_problem_from_matrices(NULL, NULL, NULL), bad);
+    other = somewhere;
     ck_assert_int_eq(flatgain_problem_parse(NULL, 5, NULL, NULL, &other, &error), bad);
+    ck_assert_ptr_null(other);
     ck_assert_int_eq(flatgain_problem_parse("a", 1, NULL, NULL, NULL, &error), bad);
     ck_assert_int_eq(flatgain_problem_parse(NULL, 0, NULL, NULL, &other, NULL), FLATGAIN_BAD_PROBLEM);
+    other = somewhere;
     ck_assert_int_eq(flatgain_problem_read(NULL, &other, &error), bad);
+    ck_assert_ptr_null(other);
     ck_assert_int_eq(flatgain_problem_read("x", NULL, &error), bad);
     ck_assert_int_eq(flatgain_problem_read("", &other, NULL), FLATGAIN_CANNOT_READ);
     ck_assert_ptr_null(other);
@@ -288,9 +296,13 @@ START_TEST(missing_pointers)
     ck_assert_int_eq(flatgain_inspect(NULL, NULL, &result, NULL), bad);
     ck_assert_int_eq(flatgain_inspect(problem, NULL, NULL, NULL), bad);
     ck_assert_int_eq(flatgain_inspect(problem, NULL, &result, NULL), FLATGAIN_OK);
+    text = somewhere;
     ck_assert_int_eq(flatgain_result_text(NULL, NULL, &text, NULL), bad);
+    ck_assert_ptr_null(text);
     ck_assert_int_eq(flatgain_result_text(result, NULL, NULL, NULL), bad);
+    text = somewhere;
     ck_assert_int_eq(flatgain_result_json(NULL, NULL, &text, NULL), bad);
+    ck_assert_ptr_null(text);
     ck_assert_int_eq(flatgain_result_json(result, NULL, NULL, NULL), bad);
     flatgain_problem_free(problem);
     check_result(problem, result, "a result keeps its problem alive");
