@@ -109,7 +109,7 @@ try "... and these are found" some
 banned='^(printf|fprintf|vprintf|vfprintf|puts|fputs|putchar|fputc|putc|fwrite|perror|write|stdout|stderr|exit|_exit|abort|atexit|signal|sigaction|raise|kill|setlocale|getenv|setenv|putenv|__printf_chk|__fprintf_chk|__assert_fail)$'
 called() { nm -u "$prefix/lib/libflatgain.a" | awk 'NF == 2 {print $2}' | grep -E "$banned"; }
 try "the library calls nothing that prints, ends, or changes the process" nothing called
-variables() { objdump -t "$prefix/lib/libflatgain.a" | awk '$(NF-2) ~ /^\.(data|bss|tdata|tbss)(\.|$)/ && $(NF-2) !~ /rel\.ro/ && $(NF-1) !~ /^0+$/'; }
+variables() { objdump -t "$prefix/lib/libflatgain.a" | awk 'NF >= 5 && $(NF-2) ~ /^\.(data|bss|tdata|tbss)(\.|$)/ && $(NF-2) !~ /rel\.ro/ && $(NF-1) !~ /^0+$/'; }
 try "the library has no writable global variables" nothing variables
 
 try "make uninstall" make -s BUILD="$BUILD" uninstall PREFIX="$prefix"
