@@ -268,13 +268,20 @@ static void warn_search(struct fg_assembly *a)
         fg_warn(a->findings, "flat-cost",
                 "The cost does not depend on the gain: the outputs, inputs, weights and disturbances do not "
                 "meet in any mode. Check C, Q and the disturbance.");
+    else if (finished && !s->rule_satisfied && s->distinct == 0)
+        fg_warn(
+            a->findings, "starts-exhausted",
+            fg_arena_text(a->arena,
+                          "None of the %d starts converged by itself, so little is known about other "
+                          "minima: a better gain may exist. Check the scaling of the weights, or bound the "
+                          "gains.",
+                          s->starts));
     else if (finished && !s->rule_satisfied)
         fg_warn(a->findings, "starts-exhausted",
                 fg_arena_text(a->arena,
-                              "The search ran out of starts before its stopping rule was met (%d "
-                              "distinct minima seen, about %s expected): a better gain may exist. "
-                              "Raise --starts.",
-                              s->distinct, fg_words_number(a->arena, s->expected_minima, 3)));
+                              "The search ended before its stopping rule was met (%d distinct %s seen in %d "
+                              "starts): a better gain may exist. Raise --starts.",
+                              s->distinct, s->distinct == 1 ? "minimum" : "minima", s->starts));
 }
 
 /* J is zero to rounding when it is this part of what the weights and disturbances could make it. */

@@ -129,6 +129,11 @@ void fg_cost_margin(struct fg_cost *cost, double margin)
     cost->margin = margin;
 }
 
+bool fg_cost_is_discrete(const struct fg_cost *cost)
+{
+    return cost->discrete;
+}
+
 void fg_cost_shift(struct fg_cost *cost, double shift)
 {
     cost->shift = shift;
@@ -248,6 +253,13 @@ static double evaluate(struct fg_cost *c)
     c->usable = true;
     c->J = J;
     return J;
+}
+
+bool fg_cost_is_posed(struct fg_cost *cost, const double *K)
+{
+    cost->usable = cost->has_P = false;
+    memcpy(cost->K, K, (size_t)cost->m * cost->p * sizeof(double));
+    return fg_all_finite((size_t)cost->m * cost->p, K) && close_algebraic_loop(cost);
 }
 
 double fg_cost_value(struct fg_cost *cost, const double *K)

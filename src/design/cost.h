@@ -15,6 +15,10 @@ struct fg_cost *fg_cost_new(const struct fg_plant *plant, const struct fg_patter
 /* Stability asked for: continuous Re < -margin, discrete |z| < 1 - margin. Default 0. */
 void fg_cost_margin(struct fg_cost *cost, double margin);
 
+bool fg_cost_is_discrete(const struct fg_cost *cost);
+/* Whether the loop u = -K (C x + D u) is well posed, stable or not. Overwrites the point. */
+bool fg_cost_is_posed(struct fg_cost *cost, const double *K);
+
 /* Evaluates a shifted plant instead: continuous A - shift I, discrete A / shift and B / shift. Default
  * 0 and 1. fg_cost_abscissa stays that of the plant itself; fg_cost_poles are those of the shifted one. */
 void fg_cost_shift(struct fg_cost *cost, double shift);

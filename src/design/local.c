@@ -3,6 +3,7 @@
 #include <math.h>
 #include <string.h>
 
+#include "design/local_internal.h"
 #include "linalg/lapack.h"
 
 /* Relative sizes, all without unit. TOLERANCE: at a Newton step that converges quadratically the next
@@ -10,15 +11,6 @@
 static const double TOLERANCE = 1e-10, ACCEPTABLE = 1e-6, LIMIT = 1e6, TINY_RADIUS = 1e-11;
 static const double MEETS_BOUND = 1e-8; /* relative */
 static const double NOISE = 1e-12;      /* relative rounding error of J that steps are judged with */
-
-struct fg_local {
-    int q;
-    double *gradient, *hessian, *step, *trial, *best;
-    double *small, *vectors, *values, *rhs, *reduced, *work; /* of the free gains */
-    double *trial_gradient;
-    int *free, *held;
-    int lwork;
-};
 
 struct fg_local *fg_local_new(int q, struct fg_arena *arena)
 {
@@ -32,7 +24,6 @@ struct fg_local *fg_local_new(int q, struct fg_arena *arena)
     for (size_t i = 0; i < sizeof vectors / sizeof *vectors; i++)
         *vectors[i] = fg_arena_doubles(arena, q);
     l->hessian = fg_arena_doubles(arena, (size_t)q * q);
-    l->small = fg_arena_doubles(arena, (size_t)q * q);
     l->vectors = fg_arena_doubles(arena, (size_t)q * q);
     l->work = fg_arena_doubles(arena, (size_t)l->lwork);
     l->free = fg_arena_ints(arena, q);
@@ -183,21 +174,6 @@ static double norm(int count, const double *x)
     return sqrt(sum);
 }
 
-/* Free gains, curvature at theta; returns the number of gains held at a bound, -1 on failure. */
-static int curvature(struct fg_local *l, const struct fg_pattern *pattern, const double *theta,
-                     struct fg_local_answer *answer)
-{
-    int count = 0;
-    for (int k = 0; k < l->q; k++)
-        if (!pushes_outward(pattern, theta, l->gradient, k))
-            l->free[count++] = k;
-    if (!decompose(l, count))
-        return -1;
-    answer->smallest = count ? l->values[0] : 0;
-    answer->largest = count ? fmax(fabs(l->values[0]), fabs(l->values[count - 1])) : 0;
-    return l->q - count;
-}
-
 /* Gradient and Hessian of log J: the same minima, but where J blows up towards the stability boundary, like
  * 1 / distance, a Newton step on log J doubles the distance and one on J only grows it by half. */
 static void log_derivatives(struct fg_local *l, struct fg_cost *cost, double J)
@@ -211,6 +187,23 @@ static void log_derivatives(struct fg_local *l, struct fg_cost *cost, double J)
         for (int k = 0; k < q; k++)
             l->hessian[k + (size_t)j * q] =
                 l->hessian[k + (size_t)j * q] / J - l->gradient[k] * l->gradient[j];
+}
+
+bool fg_local_look(struct fg_local *l, struct fg_cost *cost, const struct fg_pattern *pattern,
+                   const double *theta, struct fg_local_answer *answer)
+{
+    int count = 0;
+    log_derivatives(l, cost, answer->J);
+    answer->residual = residual_of(l, pattern, theta, l->gradient);
+    for (int k = 0; k < l->q; k++)
+        if (!pushes_outward(pattern, theta, l->gradient, k))
+            l->free[count++] = k;
+    answer->at_bound = l->q - count;
+    if (!decompose(l, count))
+        return false;
+    answer->smallest = count ? l->values[0] : 0;
+    answer->largest = count ? fmax(fabs(l->values[0]), fabs(l->values[count - 1])) : 0;
+    return true;
 }
 
 static struct fg_local_answer descend(struct fg_local *l, struct fg_cost *cost,
@@ -233,11 +226,8 @@ static struct fg_local_answer descend(struct fg_local *l, struct fg_cost *cost,
                 answer.residual = answer.smallest = answer.largest = 0;
                 return answer;
             }
-            log_derivatives(l, cost, answer.J);
             answer.hessians++;
-            answer.residual = residual_of(l, pattern, theta, l->gradient);
-            answer.at_bound = curvature(l, pattern, theta, &answer);
-            if (answer.at_bound < 0) {
+            if (!fg_local_look(l, cost, pattern, theta, &answer)) {
                 answer.end = FG_LOCAL_STALLED;
                 return answer;
             }

@@ -6,8 +6,9 @@
 #include "linalg/lapack.h"
 #include "linalg/lyapunov.h"
 
-/* The decay margin relative to the fastest pole of the LQR loop. */
-static const double MARGIN = 1e-6;
+/* The decay margin relative to the fastest pole of the LQR loop, and the part of the slowest pole of that
+ * loop that it stays below when a real law attains LQR: what the best law needs must be allowed. */
+static const double MARGIN = 1e-6, LQR_PART = 0.1;
 /* Share of an input-driven loop in the covariance that gives the units: enough to give a unit to states
  * that the disturbance does not reach. */
 static const double INPUT_SHARE = 1e-2;
@@ -19,8 +20,8 @@ static double or_one(double x)
     return isfinite(x) && x > 0 ? x : 1;
 }
 
-/* Eigenvalue of largest modulus of A, in the discrete setting of A - I. */
-static double fastest_rate(struct fg_matrix A, bool discrete, struct fg_arena *scratch)
+/* Eigenvalue of largest modulus of A, in the discrete setting of A - I; *slowest: the least decay. */
+static double fastest_rate(struct fg_matrix A, bool discrete, struct fg_arena *scratch, double *slowest)
 {
     int n = A.rows, info = 0, lwork = 8 * n + 64;
     struct fg_matrix T = fg_matrix_copy(scratch, A);
@@ -30,14 +31,17 @@ static double fastest_rate(struct fg_matrix A, bool discrete, struct fg_arena *s
     if (scratch->failed || !fg_all_finite((size_t)n * n, A.at))
         return 0;
     dgeev_("N", "N", &n, T.at, &n, wr, wi, NULL, &one, NULL, &one, work, &lwork, &info, 1, 1);
-    for (int i = 0; info == 0 && i < n; i++)
+    *slowest = INFINITY;
+    for (int i = 0; info == 0 && i < n; i++) {
         fastest = fmax(fastest, hypot(wr[i] - (discrete ? 1 : 0), wi[i]));
+        *slowest = fmin(*slowest, discrete ? 1 - hypot(wr[i], wi[i]) : -wr[i]);
+    }
     return fastest;
 }
 
 struct units {
     double *state, *input, *output;
-    double rate, fastest;
+    double rate, fastest, slowest; /* slowest: decay of the LQR loop where it is attained, else INFINITY */
 };
 
 /* Diagonal of M X M', M r x n. */
@@ -97,6 +101,7 @@ static bool units_from_loop(const struct fg_plant *plant, const struct fg_benchm
 {
     int n = plant->n, m = plant->m, p = plant->p;
     bool memory = false;
+    double slowest = INFINITY;
     if (!benchmark->has_lqr_gain)
         return false;
     struct fg_matrix A = fg_matrix_copy(scratch, plant->A), X = fg_matrix_new(scratch, n, n);
@@ -106,7 +111,9 @@ static bool units_from_loop(const struct fg_plant *plant, const struct fg_benchm
         return false;
     fg_multiply('N', 'N', -1, plant->B, benchmark->L, 1, A);
     fg_multiply('N', 'N', -1, plant->D, benchmark->L, 1, Cl); /* y = (C - D L) x + v */
-    units->fastest = fastest_rate(A, plant->discrete, scratch);
+    units->fastest = fastest_rate(A, plant->discrete, scratch, &slowest);
+    if (benchmark->lqr.kind == FG_BOUND_ATTAINED && slowest > 0)
+        units->slowest = slowest;
     units->rate = plant->discrete ? 1 : or_one(units->fastest);
     if (!fg_lyapunov(plant->discrete, A, W, X, &memory)) {
         scratch->failed = scratch->failed || memory;
@@ -143,7 +150,8 @@ static void units_from_matrices(const struct fg_plant *plant, struct fg_arena *s
     if (scratch->failed)
         return;
     dgebal_("S", &n, A.at, &n, &low, &high, units->state, &info, 1);
-    units->fastest = fastest_rate(plant->A, plant->discrete, scratch);
+    double slowest;
+    units->fastest = fastest_rate(plant->A, plant->discrete, scratch, &slowest);
     units->rate = plant->discrete ? 1 : or_one(units->fastest);
     for (int k = 0; k < plant->m; k++) {
         double size = 0;
@@ -226,13 +234,17 @@ flatgain_status fg_scale(const struct fg_plant *plant, const struct fg_pattern *
     struct fg_arena scratch = {0};
     struct units units = {fg_arena_doubles(arena, (size_t)plant->n),
                           fg_arena_doubles(arena, (size_t)plant->m),
-                          fg_arena_doubles(arena, (size_t)plant->p), 1, 1};
+                          fg_arena_doubles(arena, (size_t)plant->p),
+                          1,
+                          1,
+                          INFINITY};
     *scaled = (struct fg_scaled){.input = units.input, .output = units.output};
     if (!arena->failed && !units_from_loop(plant, benchmark, &scratch, &units) && !scratch.failed)
         units_from_matrices(plant, &scratch, &units);
     scaled->rate = units.rate;
     /* the margin is a rate; in the discrete setting the fastest pole of the loop less 1 stands for it */
     scaled->margin = MARGIN * (plant->discrete ? fmin(1, or_one(units.fastest)) : 1);
+    scaled->margin = fmin(scaled->margin, LQR_PART * units.slowest / units.rate);
     if (!arena->failed && !scratch.failed) {
         scale_plant(plant, &units, arena, &scaled->plant);
         scale_pattern(pattern, scaled, arena);

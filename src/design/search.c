@@ -6,36 +6,27 @@
 
 #include "base/pool.h"
 #include "design/continuation.h"
-#include "design/local.h"
-#include "design/scaling.h"
+#include "design/finish.h"
 #include "design/first_phase.h"
+#include "design/local.h"
+#include "design/margin.h"
+#include "design/records.h"
+#include "design/scaling.h"
 #include "design/stabilise.h"
 #include "design/starts.h"
-#include "plant/fixed_modes.h"
 
 /* Starts done before the stopping rule is asked again; fixed, so that the answer does not depend on the
  * number of threads. */
-enum { BATCH = 8, ITERATIONS = 200, HOPELESS = 24 };
-/* Two minima are one when their costs agree to this, relative. */
-static const double SAME_COST = 1e-6;
+enum { BATCH = 8, ITERATIONS = 200, HOPELESS = 32 };
+/* Best starts that are finished (finish.h) at most. */
+enum { FINISHED = 4 };
 /* J below this part of its natural size is zero within rounding. */
 static const double NEGLIGIBLE = 1e-14;
-/* Hessian and gradient below this, relative to J in natural units: J does not depend on the gain. */
-static const double FLAT = 1e-6;
-
-struct record {
-    bool done, stabilised;
-    double *theta; /* q, natural units */
-    double abscissa;
-    struct fg_local_answer local; /* when stabilised */
-    long evaluations;
-};
-
 struct shared {
     const struct fg_search_request *request;
     const struct fg_scaled *scaled;
     const double *today_theta;
-    struct record *records;
+    struct fg_record *records;
     int first; /* start index of the batch */
     atomic_bool stop, no_memory;
     atomic_int finished;        /* starts, whoever did them */
@@ -77,7 +68,7 @@ static void one_start(void *context, int offset)
     struct worker *worker = context;
     struct shared *shared = worker->shared;
     const struct fg_scaled *scaled = shared->scaled;
-    struct record *record = &shared->records[shared->first + offset];
+    struct fg_record *record = &shared->records[shared->first + offset];
     struct fg_local_limits limits = limits_of(worker);
     if (told_to_stop(worker))
         return;
@@ -117,139 +108,10 @@ static void one_start(void *context, int offset)
     }
 }
 
-/* Distinct minima among the records so far, best first; one start each in `representative` (the one with
- * the smallest residual). Returns their number. */
-static int distinct_minima(const struct record *records, int count, double negligible, int *representative,
-                           int *hits, int *converged)
-{
-    int distinct = 0;
-    *converged = 0;
-    for (int i = 0; i < count; i++) {
-        const struct record *r = &records[i];
-        if (!r->done || !r->stabilised || r->local.end != FG_LOCAL_MINIMUM)
-            continue;
-        ++*converged;
-        int k = 0;
-        for (; k < distinct; k++) {
-            double J = records[representative[k]].local.J;
-            if (fabs(r->local.J - J) <= SAME_COST * fabs(J) + negligible)
-                break;
-        }
-        if (k < distinct) {
-            hits[k]++;
-            if (r->local.residual < records[representative[k]].local.residual)
-                representative[k] = i;
-            continue;
-        }
-        for (k = distinct++; k > 0 && records[representative[k - 1]].local.J > r->local.J; k--) {
-            representative[k] = representative[k - 1];
-            hits[k] = hits[k - 1];
-        }
-        representative[k] = i;
-        hits[k] = 1;
-    }
-    return distinct;
-}
-
-/* Boender, Rinnooy Kan, Math. Program. 37 (1987) 59: with w distinct minima in n converged starts the
- * posterior mean of their number is w (n - 1) / (n - w - 2). */
-static double expected_minima(int w, int n)
-{
-    return n > w + 2 ? w * (n - 1.0) / (n - w - 2.0) : INFINITY;
-}
-
-/* Best record: lowest cost; within SAME_COST a converged one goes before one that is not. */
-static int best_record(const struct record *records, int count)
-{
-    int best = -1;
-    for (int i = 0; i < count; i++) {
-        const struct record *r = &records[i];
-        if (!r->stabilised || !isfinite(r->local.J))
-            continue;
-        if (best < 0) {
-            best = i;
-            continue;
-        }
-        double J = records[best].local.J, same = SAME_COST * fabs(J);
-        bool converged = r->local.end == FG_LOCAL_MINIMUM, held = records[best].local.end == FG_LOCAL_MINIMUM;
-        if (r->local.J < J - same || (r->local.J <= J + same && converged && !held) ||
-            (converged == held && r->local.J < J && r->local.J < J - 1e-12 * fabs(J)))
-            best = i;
-    }
-    return best;
-}
-
-static int least_unstable(const struct record *records, int count)
-{
-    int best = -1;
-    for (int i = 0; i < count; i++)
-        if (records[i].done && !isnan(records[i].abscissa) &&
-            (best < 0 || records[i].abscissa < records[best].abscissa))
-            best = i;
-    return best;
-}
-
-static enum fg_search_end judge_end(const struct record *records, int count, const struct record *best)
-{
-    switch (best->local.end) {
-    case FG_LOCAL_BOUNDARY:
-        return FG_SEARCH_BOUNDARY;
-    case FG_LOCAL_UNBOUNDED:
-        return FG_SEARCH_UNBOUNDED;
-    case FG_LOCAL_MINIMUM:
-        break;
-    default:
-        return FG_SEARCH_STALLED;
-    }
-    if (best->local.largest > FLAT || best->local.at_bound > 0)
-        return FG_SEARCH_MINIMUM;
-    for (int i = 0; i < count; i++)
-        if (records[i].stabilised && records[i].local.J > best->local.J * (1 + SAME_COST))
-            return FG_SEARCH_MINIMUM;
-    return FG_SEARCH_FLAT;
-}
-
 static void to_user_gain(const struct fg_scaled *scaled, const double *theta, double *K)
 {
     fg_pattern_gain(&scaled->pattern, theta, K);
     fg_scaled_to_user(scaled, K, K);
-}
-
-/* Modes that no gain moves are exempt from the decay margin: it becomes half the decay of the slowest of
- * them. They are open-loop modes too, so the costly look for them is taken only when one is that slow. */
-static flatgain_status exempt_fixed_modes(struct shared *shared, struct fg_scaled *scaled,
-                                          struct fg_cost *cost, double *theta, flatgain_error *error)
-{
-    const struct fg_plant *plant = shared->request->plant;
-    const double *re, *im;
-    bool slow = false;
-    if (fg_start(scaled, NULL, 0, 0, theta) != FLATGAIN_OK)
-        return fg_no_memory(error);
-    fg_cost_at(cost, theta);
-    if (isnan(fg_cost_abscissa(cost)))
-        return FLATGAIN_OK;
-    fg_cost_poles(cost, &re, &im);
-    for (int i = 0; i < plant->n; i++) {
-        double decay = plant->discrete ? 1 - hypot(re[i], im[i]) : -re[i];
-        slow = slow || (decay > 0 && decay < 2 * scaled->margin);
-    }
-    if (!slow)
-        return FLATGAIN_OK;
-    struct fg_arena scratch = {0};
-    struct fg_fixed_modes fixed;
-    const char **names = fg_arena_get(&scratch, (size_t)plant->n * sizeof *names);
-    for (int i = 0; names && i < plant->n; i++)
-        names[i] = "";
-    flatgain_status status =
-        names ? fg_modes_fixed(plant, shared->request->pattern, names, &scratch, &fixed, error)
-              : fg_no_memory(error);
-    for (int k = 0; status == FLATGAIN_OK && k < fixed.count; k++) {
-        double decay = plant->discrete ? 1 - hypot(fixed.mode[k].re, fixed.mode[k].im) : -fixed.mode[k].re;
-        if (decay > 0 && !fixed.mode[k].unstable)
-            scaled->margin = fmin(scaled->margin, 0.5 * decay / scaled->rate);
-    }
-    fg_arena_release(&scratch);
-    return status == FLATGAIN_NO_MEMORY ? status : FLATGAIN_OK;
 }
 
 static flatgain_status make_worker(struct worker *worker, struct shared *shared)
@@ -269,7 +131,7 @@ static void report(struct shared *shared, int count, struct fg_search_answer *an
                    const int *representative, const int *hits, struct fg_arena *arena)
 {
     const struct fg_scaled *scaled = shared->scaled;
-    const struct record *records = shared->records;
+    const struct fg_record *records = shared->records;
     size_t entries = (size_t)scaled->plant.m * scaled->plant.p;
     answer->K = fg_arena_doubles(arena, entries);
     answer->minima = fg_arena_get(arena, (size_t)(answer->distinct + 1) * sizeof *answer->minima);
@@ -290,13 +152,13 @@ static void report(struct shared *shared, int count, struct fg_search_answer *an
     answer->cost = INFINITY;
     answer->residual = answer->smallest_curvature = answer->abscissa = NAN;
     answer->decay_margin = scaled->margin * scaled->rate;
-    int best = best_record(records, count);
-    answer->end = best < 0 ? FG_SEARCH_NOT_FOUND : judge_end(records, count, &records[best]);
+    int best = fg_records_best(records, count);
+    answer->end = best < 0 ? FG_SEARCH_NOT_FOUND : fg_records_end(records, count, best);
     if (best < 0)
-        best = least_unstable(records, count);
+        best = fg_records_least_unstable(records, count);
     if (best < 0)
         return;
-    const struct record *r = &records[best];
+    const struct fg_record *r = &records[best];
     to_user_gain(scaled, r->theta, answer->K);
     answer->abscissa = r->abscissa * scaled->rate;
     if (r->stabilised) {
@@ -315,7 +177,7 @@ static flatgain_status run(struct shared *shared, struct worker *workers, void *
 {
     int *representative = fg_arena_ints(arena, (size_t)starts), *hits = fg_arena_ints(arena, (size_t)starts);
     double negligible = NEGLIGIBLE * fg_natural_cost(shared->scaled);
-    int converged = 0, count = 0, stabilised = 0;
+    int converged = 0, count = 0;
     if (arena->failed)
         return fg_no_memory(error);
     workers[0].calling_thread = true;
@@ -328,9 +190,9 @@ static flatgain_status run(struct shared *shared, struct worker *workers, void *
             return fg_no_memory(error);
         count += batch;
         answer->distinct =
-            distinct_minima(shared->records, count, negligible, representative, hits, &converged);
-        answer->expected_minima = expected_minima(answer->distinct, converged);
-        int best = best_record(shared->records, count);
+            fg_records_distinct(shared->records, count, negligible, representative, hits, &converged);
+        answer->expected_minima = fg_expected_minima(answer->distinct, converged);
+        int best = fg_records_best(shared->records, count);
         shared->progress.starts_done = count;
         shared->progress.minima = answer->distinct;
         shared->progress.best = best < 0 ? INFINITY : shared->records[best].local.J;
@@ -338,24 +200,21 @@ static flatgain_status run(struct shared *shared, struct worker *workers, void *
             answer->rule_satisfied = true;
             break;
         }
-        stabilised = 0;
-        for (int i = 0; i < count; i++)
-            stabilised += shared->records[i].stabilised;
-        if (answer->distinct == 0 && stabilised >= HOPELESS)
-            break; /* no minimum in sight: more starts would end at the boundary or at infinity as well */
+        if (answer->distinct == 0 && fg_records_stabilised(shared->records, count) >= HOPELESS)
+            break; /* no minimum in sight: more starts would end like these; what is left goes to fg_finish */
     }
-    int best = best_record(shared->records, count);
-    if (best >= 0 && shared->records[best].local.end != FG_LOCAL_MINIMUM && !atomic_load(&shared->stop)) {
-        struct record *record = &shared->records[best];
-        struct fg_local_limits limits = limits_of(&workers[0]);
-        if (fg_continue_to_infimum(shared->scaled, workers[0].cost, workers[0].local, &limits, record->theta,
-                                   &record->local) != FLATGAIN_OK)
+    struct fg_local_limits limits = limits_of(&workers[0]);
+    for (int best, last = -1, tries = 0; tries < FINISHED && !atomic_load(&shared->stop);
+         tries++, last = best) {
+        best = fg_records_best(shared->records, count);
+        if (best < 0 || best == last) /* the best start is finished */
+            break;
+        if (fg_finish(shared->scaled, workers[0].cost, workers[0].local, &limits, &shared->records[best]) !=
+            FLATGAIN_OK)
             return fg_no_memory(error);
-        fg_cost_at(workers[0].cost, record->theta);
-        record->abscissa = fg_cost_abscissa(workers[0].cost);
-        answer->distinct =
-            distinct_minima(shared->records, count, negligible, representative, hits, &converged);
     }
+    answer->distinct =
+        fg_records_distinct(shared->records, count, negligible, representative, hits, &converged);
     answer->interrupted = atomic_load(&shared->stop);
     report(shared, count, answer, representative, hits, arena);
     return arena->failed ? fg_no_memory(error) : FLATGAIN_OK;
@@ -375,8 +234,8 @@ static void pad_gain(const struct fg_search_request *request, struct fg_benchmar
     benchmark->L = L;
 }
 
-flatgain_status fg_search(const struct fg_search_request *request, struct fg_arena *arena,
-                          struct fg_search_answer *answer, flatgain_error *error)
+flatgain_status fg_search_as_given(const struct fg_search_request *request, struct fg_arena *arena,
+                                   struct fg_search_answer *answer, flatgain_error *error)
 {
     struct fg_arena scratch = {0};
     struct fg_scaled scaled;
@@ -419,7 +278,8 @@ flatgain_status fg_search(const struct fg_search_request *request, struct fg_are
             status = fg_no_memory(error);
     }
     if (status == FLATGAIN_OK)
-        status = exempt_fixed_modes(&shared, &scaled, workers[0].cost, thetas, error);
+        status = fg_settle_margin(request->plant, request->pattern, &scaled, workers[0].cost,
+                                  shared.today_theta, thetas, error);
     for (int i = 0; i < threads && status == FLATGAIN_OK; i++)
         fg_cost_margin(workers[i].cost, scaled.margin);
     if (status == FLATGAIN_OK)

@@ -48,7 +48,12 @@ struct fg_search_answer {
     double decay_margin; /* the search never went closer to the boundary than this (user's time unit) */
 };
 
+/* Chooses the coordinates: F = (I + K D)^-1 K where D is not zero and every gain is free, else K. */
 flatgain_status fg_search(const struct fg_search_request *request, struct fg_arena *arena,
                           struct fg_search_answer *answer, flatgain_error *error);
+
+/* The search in the coordinates of the plant given. */
+flatgain_status fg_search_as_given(const struct fg_search_request *request, struct fg_arena *arena,
+                                   struct fg_search_answer *answer, flatgain_error *error);
 
 #endif

@@ -150,7 +150,9 @@ static void one_model(const char *name)
     } else {
         ck_assert_msg(outcome == FLATGAIN_TUNED, "%s: %s", name, flatgain_outcome_name(outcome));
         ck_gain(&plant, result, true);
-        ck_assert_msg(flatgain_result_residual(result) <= 1e-5, "%s: residual %g", name,
+        /* a cost that meets LQG is a minimum whatever the residual: the valley there may be flat (ROC6) */
+        bool meets = cost_of(result) <= flatgain_result_cost(result, FLATGAIN_COST_LQG) * (1 + 1e-8);
+        ck_assert_msg(meets || flatgain_result_residual(result) <= 1e-5, "%s: residual %g", name,
                       flatgain_result_residual(result));
         if (listed(zero_cost, name)) {
             ck_assert_msg(J <= zero_of(&plant), "%s: cost %g, known to be 0", name, J);
