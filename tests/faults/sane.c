@@ -77,6 +77,8 @@ static void check_again(const flatgain_problem *problem, const flatgain_result *
     ck_assert_int_eq(flatgain_result_json(result, NULL, &text, NULL), FLATGAIN_OK);
     ck_assert_msg(strstr(text, "\"cost-uncertain\"") || strstr(text, "\"zero-cost\""),
                   "%s: tuned %.9g, judged %.9g, and no warning", what, cost, judged);
+    if (strstr(text, "\"cost-uncertain\""))
+        ck_assert_int_eq(flatgain_result_exit_status(result), 5);
     flatgain_text_free(text);
 }
 

@@ -211,8 +211,8 @@ static const struct {
      FG_BOUND_ATTAINED},
     {"kwakernaak_sivan_position_servo_state", 0.11023993821843386, 0.11023993821843386, 1e-10,
      FG_BOUND_LIMIT},
-    {"dlqr_scalar_unstable", 6.038078064944054, 6.038078064944054, 1e-12, FG_BOUND_ATTAINED},
-    {"dlqr_double_integrator_position", 60.6377314671026, 168.42208560280562, 1e-10, FG_BOUND_ATTAINED},
+    {"discrete_scalar_unstable", 6.038078064944054, 6.038078064944054, 1e-12, FG_BOUND_ATTAINED},
+    {"discrete_double_integrator_position", 60.6377314671026, 168.42208560280562, 1e-10, FG_BOUND_ATTAINED},
     {"nosof_double_integrator", 3.4641016151377544, 13.85640646055101, 1e-10, FG_BOUND_ATTAINED},
     {"nosof_parity_interlacing", 7.2915026221291885, 1147.9851069483436, 1e-10, FG_BOUND_ATTAINED},
     {"scalar_lq", 0.7982735495102029, 15.708098346445633, 1e-10, FG_BOUND_ATTAINED},
@@ -238,7 +238,7 @@ END_TEST
 START_TEST(discrete_scalar_with_noise)
 {
     struct case_data data;
-    ck_assert(case_load("dlqr_scalar_unstable", &data));
+    ck_assert(case_load("discrete_scalar_unstable", &data));
     struct fg_plant plant = plant_of(&data);
     plant.V.at[0] = 1;
     struct fg_benchmark b = benchmark(&plant);
@@ -659,7 +659,7 @@ START_TEST(published_in_other_units)
 {
     static const char *const names[] = {"AC4",  "AC15", "AC17", "AC18",
                                         "REA1", "NN17", "HE1",  "MFP",
-                                        "TG1",  "NN12", "FS",   "dlqr_double_integrator_position"};
+                                        "TG1",  "NN12", "FS",   "discrete_double_integrator_position"};
     for (size_t i = 0; i < sizeof names / sizeof *names; i++) {
         struct case_data data;
         ck_assert(case_load(names[i], &data));

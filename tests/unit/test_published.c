@@ -185,7 +185,7 @@ END_TEST
 static const double servo_gain[2] = {223.60679774998, 18.69916044876};
 
 /* oscillators: Levine, Athans, IEEE TAC 15 (1970) 44, J(k) = 1/k + 3k/2 and 2/k + 3k/2, derived by hand.
- * scalar_lq: textbook. dlqr_scalar_unstable: P^2 - 5.21 P - 5 = 0, J = P, K = 1.1 P / (1 + P). zheng: Zheng,
+ * scalar_lq: textbook. discrete_scalar_unstable: P^2 - 5.21 P - 5 = 0, J = P, K = 1.1 P / (1 + P). zheng: Zheng,
  * Tang, Li, LQG landscape, example 8: LQR gain [1 1] = 1 C. fatkhullin_polyak: Optimizing static linear
  * feedback, examples 3.1, 3.2, k + 1/k and (1 + sqrt 2) I. feedthrough: F = 1 + sqrt 2 by hand. Servo:
  * Kwakernaak, Sivan, Linear Optimal Control Systems, example 3.8 (printed 223.6, 18.69), all states read. */
@@ -198,7 +198,7 @@ static const struct {
     {"NN2", 2.449489742783178, {0.816496580927726}, 1},
     {"oscillator_velocity_QI", 3.4641016151377544, {1.1547005383792517}, 1},
     {"scalar_lq", 0.7982735495102031, {3.421172355043728}, 1},
-    {"dlqr_scalar_unstable", 6.038078064944, {0.94370733176732}, 1},
+    {"discrete_scalar_unstable", 6.038078064944, {0.94370733176732}, 1},
     {"zheng_lqg_example8", 8.8, {1}, 1},
     {"fatkhullin_polyak_1d", 2, {1}, 1},
     {"fatkhullin_polyak_2d_identity", 4.82842712474619, {2.414213562373095, 0, 0, 2.414213562373095}, 4},
@@ -263,7 +263,7 @@ static double scalar_with_noise(double K)
 
 START_TEST(discrete_scalar_with_noise)
 {
-    ck_assert(case_load("dlqr_scalar_unstable", &data));
+    ck_assert(case_load("discrete_scalar_unstable", &data));
     double low = 0.2, high = 2, one = 1, ratio = (sqrt(5) - 1) / 2;
     free(data.V);
     data.V = malloc(sizeof *data.V);
@@ -452,7 +452,7 @@ static const struct {
 } impossible[] = {
     {"nosof_double_integrator", true},    {"nosof_double_integrator_lag", false},
     {"nosof_hidden_unstable_mode", true}, {"nosof_parity_interlacing", false},
-    {"nosof_two_by_two_trace", true},     {"dlqr_double_integrator_position", false},
+    {"nosof_two_by_two_trace", true},     {"discrete_double_integrator_position", false},
 };
 
 START_TEST(no_static_gain)
