@@ -21,6 +21,7 @@ struct fg_assembly {
     struct fg_cost *cost;   /* evaluator with the free pattern */
     bool open_stable;
     bool ill_posed;                 /* I + K D is singular for the gain assessed */
+    bool doubtful;                  /* the cost of the tuned gain is nothing but rounding */
     struct fg_modes open, closed;   /* open loop; closed loop with the gain (count 0: none) */
     struct fg_search_answer answer; /* tune only */
     bool has_unstructured;

@@ -241,6 +241,8 @@ static int exit_status(const struct fg_assembly *a)
     case FLATGAIN_JUDGED:
         break;
     }
+    if (a->doubtful)
+        return 5;
     const char *where;
     bool missed = !f->stable || f->verdict == FG_VERDICT_REFUSED || f->verdict == FG_VERDICT_CANNOT_TELL;
     if (f->outcome == FLATGAIN_TUNED && a->answer.end == FG_SEARCH_STALLED)

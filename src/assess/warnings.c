@@ -320,6 +320,7 @@ static void warn_doubt(struct fg_assembly *a)
     double again = fg_cost_value(a->cost, f->K);
     if (fabs(again - f->cost) <= DOUBT * fabs(f->cost))
         return;
+    a->doubtful = true;
     fg_warn(a->findings, "cost-uncertain",
             fg_arena_text(a->arena,
                           "Rounding decides in this problem: the search found the cost %s, but computed from "
