@@ -17,37 +17,38 @@ enum {
     SIDE = LEAF /* scratch of the kernel */
 };
 
-/* Solves the k x k system M z = r (k <= 4, row-major M) by elimination with full row pivoting. */
-static void solve_small(int k, double *M, double *r)
+/* Real solution of s y1 - d y2 = t1, d y1 + s y2 = t2: no cancellation in the denominator. */
+static void rotate_back(double s, double d, double *t1, double *t2)
 {
-    for (int c = 0; c < k; c++) {
-        int best = c;
-        for (int i = c + 1; i < k; i++)
-            if (fabs(M[i * k + c]) > fabs(M[best * k + c]))
-                best = i;
-        if (best != c) {
-            for (int j = c; j < k; j++) {
-                double keep = M[c * k + j];
-                M[c * k + j] = M[best * k + j];
-                M[best * k + j] = keep;
-            }
-            double keep = r[c];
-            r[c] = r[best];
-            r[best] = keep;
-        }
-        double pivot = 1 / M[c * k + c];
-        for (int i = c + 1; i < k; i++) {
-            double factor = M[i * k + c] * pivot;
-            for (int j = c + 1; j < k; j++)
-                M[i * k + j] -= factor * M[c * k + j];
-            r[i] -= factor * r[c];
-        }
+    double scale = 1 / (s * s + d * d), y1 = (s * *t1 + d * *t2) * scale;
+    *t2 = (s * *t2 - d * *t1) * scale;
+    *t1 = y1;
+}
+
+/* Two complex pairs. dgees leaves a = [a0 b0; c0 a0] with b0 c0 < 0, that is a = S (a0 I + w J) S^-1 with
+ * S = diag(1, sqrt(-c0 / b0)), w = b0 sqrt(-c0 / b0), J = [0 1; -1 0]. In Y = Sa^-1 x Sb^-1 the equation is
+ *
+ *   (a0 + b0) Y + wa J Y - wb Y J = T       or      (a0 I + wa J) Y (b0 I - wb J) - Y = T,
+ *
+ * which falls apart into span{I, J}, where Y commutes with J, and span{[1 0; 0 -1], [0 1; 1 0]}, where it
+ * anticommutes: two rotations with scaling. */
+static void solve_pairs(bool discrete, const double *a, int lda, const double *b, int ldb, double *r)
+{
+    double sa = sqrt(-a[1] / a[lda]), sb = sqrt(-b[1] / b[ldb]);
+    double wa = a[lda] * sa, wb = b[ldb] * sb, a0 = a[0], b0 = b[0];
+    double T11 = r[0], T21 = r[1] / sa, T12 = r[2] / sb, T22 = r[3] / (sa * sb);
+    double t1 = 0.5 * (T11 + T22), t2 = 0.5 * (T12 - T21), t3 = 0.5 * (T11 - T22), t4 = 0.5 * (T12 + T21);
+    if (discrete) {
+        rotate_back(a0 * b0 + wa * wb - 1, wa * b0 - a0 * wb, &t1, &t2);
+        rotate_back(a0 * b0 - wa * wb - 1, -(wa * b0 + a0 * wb), &t3, &t4);
+    } else {
+        rotate_back(a0 + b0, wa - wb, &t1, &t2);
+        rotate_back(a0 + b0, -(wa + wb), &t3, &t4);
     }
-    for (int c = k - 1; c >= 0; c--) {
-        for (int j = c + 1; j < k; j++)
-            r[c] -= M[c * k + j] * r[j];
-        r[c] /= M[c * k + c];
-    }
+    r[0] = t1 + t3;
+    r[1] = (t4 - t2) * sa;
+    r[2] = (t4 + t2) * sb;
+    r[3] = (t1 - t3) * (sa * sb);
 }
 
 /* One diagonal block pair: a x + x b' = r or a x b' - x = r, a p x p, b q x q, p and q 1 or 2, x over r
@@ -55,41 +56,21 @@ static void solve_small(int k, double *M, double *r)
 static void solve_blocks(bool discrete, int p, int q, const double *a, int lda, const double *b, int ldb,
                          double *r)
 {
-    if (p == 1 && q == 1) {
-        r[0] /= discrete ? a[0] * b[0] - 1 : a[0] + b[0];
-        return;
-    }
-    if (p * q == 2) {
-        /* [d e; f d] with d = t or t' and e f < 0 as dgees leaves it: the determinant d^2 - e f is a sum of
-         * squares, so Cramer's rule loses nothing */
+    if (p == 2 && q == 2) {
+        solve_pairs(discrete, a, lda, b, ldb, r);
+    } else if (p * q == 2) {
+        /* [d e; f d] with e f < 0: the determinant d^2 - e f is a sum of squares, so Cramer's rule loses
+         * nothing */
         const double *two = p == 2 ? a : b;
         int ld = p == 2 ? lda : ldb;
         double one = p == 2 ? b[0] : a[0], factor = discrete ? one : 1, shift = discrete ? -1 : one;
-        double d0 = factor * two[0] + shift, e = factor * two[ld], f = factor * two[1],
-               d1 = factor * two[ld + 1] + shift;
-        double determinant = d0 * d1 - e * f, r0 = r[0];
-        r[0] = (r0 * d1 - e * r[1]) / determinant;
-        r[1] = (d0 * r[1] - f * r0) / determinant;
-        return;
+        double d = factor * two[0] + shift, e = factor * two[ld], f = factor * two[1];
+        double scale = 1 / (d * d - e * f), r0 = r[0];
+        r[0] = (r0 * d - e * r[1]) * scale;
+        r[1] = (d * r[1] - f * r0) * scale;
+    } else {
+        r[0] /= discrete ? a[0] * b[0] - 1 : a[0] + b[0];
     }
-    double M[16] = {0};
-    int k = p * q;
-    for (int j = 0; j < q; j++)
-        for (int i = 0; i < p; i++) {
-            double *row = M + (j * p + i) * k;
-            if (discrete) {
-                for (int l = 0; l < q; l++)
-                    for (int h = 0; h < p; h++)
-                        row[l * p + h] = a[i + h * lda] * b[j + l * ldb];
-                row[j * p + i] -= 1;
-            } else {
-                for (int h = 0; h < p; h++)
-                    row[j * p + h] += a[i + h * lda];
-                for (int l = 0; l < q; l++)
-                    row[l * p + i] += b[j + l * ldb];
-            }
-        }
-    solve_small(k, M, r);
 }
 
 static int block_before(const double *T, int ld, int end) /* size of the diagonal block that ends at `end` */
