@@ -125,14 +125,17 @@ static flatgain_status begin(struct fg_assembly *a, const struct flatgain_proble
     return a->arena->failed ? fg_no_memory(error) : FLATGAIN_OK;
 }
 
-/* A sensor's filter is in no weight by construction: its mode being unweighted is no news. */
-static bool is_sensor_lag(const struct fg_assembly *a, const struct fg_mode *mode)
+bool fg_is_sensor_lag(const struct fg_assembly *a, const struct fg_mode *mode)
 {
-    if (mode->uncontrollable || mode->unobservable || mode->undisturbed || mode->im != 0)
+    if (mode->im != 0)
         return false;
+    int state = a->problem->n; /* the filters are the last states, in the order of the outputs */
     for (int i = 0; i < a->problem->p; i++) {
         double lag = a->problem->outputs[i].lag;
-        if (lag > 0 && fabs(mode->re * lag + 1) < 1e-6)
+        if (!(lag > 0))
+            continue;
+        const char *name = a->model.state_names[state++];
+        if (fabs(mode->re * lag + 1) < 1e-6 && strncmp(mode->states, name, strlen(name)) == 0)
             return true;
     }
     return false;
@@ -148,7 +151,7 @@ static void list_hidden(struct fg_assembly *a)
         const struct fg_mode *mode = &a->open.mode[k];
         if (!mode->uncontrollable && !mode->unobservable && !mode->unweighted && !mode->undisturbed)
             continue;
-        if (is_sensor_lag(a, mode))
+        if (fg_is_sensor_lag(a, mode))
             continue;
         double size = hypot(mode->re, mode->im);
         f->hidden_modes[f->hidden++] =
@@ -209,6 +212,25 @@ static flatgain_status find_closed_modes(struct fg_assembly *a, const double *K,
     return FLATGAIN_OK;
 }
 
+/* A peak far below the slowest pole is one at frequency 0, found at the edge of the grid. */
+static void settle_low_peaks(struct fg_findings *f)
+{
+    const double low = 1e-4;
+    double slowest = INFINITY;
+    for (int k = 0; k < f->order && f->poles; k++) {
+        double radius = f->poles[k].speed, decay = log(radius);
+        bool discrete = f->problem->setting == FG_DISCRETE;
+        slowest = fmin(slowest, discrete ? hypot(decay, atan2(f->poles[k].im, f->poles[k].re)) : radius);
+    }
+    if (!isfinite(slowest))
+        return;
+    for (int i = 0; i < f->margins; i++)
+        if (f->margin[i].peak_frequency < low * slowest)
+            f->margin[i].peak_frequency = 0;
+    if (f->peak_frequency < low * slowest)
+        f->peak_frequency = 0;
+}
+
 /* Gain, its poles and, when it stabilises, its margins. K is m x p column-major, cost INFINITY when
  * unstable. */
 static flatgain_status assess_gain(struct fg_assembly *a, const double *K, double cost, flatgain_error *error)
@@ -253,6 +275,7 @@ static flatgain_status assess_gain(struct fg_assembly *a, const double *K, doubl
     f->margin = margins.loop;
     f->peak_sensitivity = finite_or_nan(margins.peak_sensitivity);
     f->peak_frequency = finite_or_nan(margins.peak_frequency);
+    settle_low_peaks(f);
     return FLATGAIN_OK;
 }
 

@@ -54,6 +54,12 @@ void fg_verdict_fill(struct fg_assembly *a);
 /* Outputs without noise in the continuous setting; true when there are any. chosen: p flags. */
 bool fg_verdict_noise_free(const struct flatgain_problem *problem, bool *chosen);
 
+/* ---- assemble.c ---- */
+
+/* An open-loop mode of a sensor's filter, stable by construction: that the weights do not see it, or that two
+ * equal filters behind one input cannot be moved apart, is no news. */
+bool fg_is_sensor_lag(const struct fg_assembly *a, const struct fg_mode *mode);
+
 /* ---- warnings.c ---- */
 
 void fg_warnings_fill(struct fg_assembly *a);

@@ -99,14 +99,28 @@ static const char *end_note(enum fg_search_end end)
     return "";
 }
 
+/* The judged gain is the one in use: one rung says it. */
+static bool is_today(const struct fg_assembly *a)
+{
+    const struct fg_findings *f = a->findings;
+    if (f->outcome != FLATGAIN_JUDGED || !a->problem->has_today)
+        return false;
+    for (int k = 0; k < a->problem->m * a->problem->p; k++)
+        if (f->K[k] != a->problem->today.at[k])
+            return false;
+    return true;
+}
+
 static void add_rungs(struct fg_assembly *a)
 {
     struct fg_findings *f = a->findings;
     add(f, "none", "no control", f->cost_none, isnan(f->cost_none) ? "unstable" : "");
-    if (a->problem->has_today)
+    bool judged_today = is_today(a);
+    if (a->problem->has_today && !judged_today)
         add(f, "today", "gain in use today", f->cost_today, isnan(f->cost_today) ? "unstable" : "");
     if (f->outcome == FLATGAIN_JUDGED)
-        add(f, "judged", "judged gain", f->cost, f->stable ? "" : "unstable");
+        add(f, "judged", judged_today ? "judged gain, in use today" : "judged gain", f->cost,
+            f->stable ? "" : "unstable");
     else if (f->has_gain)
         add(f, "tuned", a->restricted ? "tuned gain, within your limits" : "tuned gain", f->cost,
             end_note(a->answer.end));

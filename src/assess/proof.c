@@ -83,6 +83,29 @@ static void prove_by_pole_sum(struct fg_assembly *a)
     f->proof.sum = total.value;
 }
 
+/* What the plant needs so that this mode can be moved. */
+static const char *cure_of_mode(const struct fg_assembly *a, const struct fg_fixed_mode *fixed)
+{
+    const struct fg_mode *same = NULL;
+    double least = 1e-6 * hypot(fixed->re, fixed->im) + fixed->error;
+    for (int k = 0; k < a->open.count; k++) {
+        double away = hypot(a->open.mode[k].re - fixed->re, fabs(a->open.mode[k].im) - fixed->im);
+        if (away <= least) {
+            least = away;
+            same = &a->open.mode[k];
+        }
+    }
+    if (same && same->uncontrollable)
+        return same->unobservable
+                   ? "No input moves it and no output shows it: it needs another actuator and another "
+                     "measurement"
+                   : "No input moves it: it needs another actuator";
+    if (same && same->unobservable)
+        return "No output shows it: it needs another measurement";
+    return a->restricted ? "It needs a freer pattern, another actuator or another measurement"
+                         : "It needs another actuator or another measurement";
+}
+
 /* An unstable mode that no gain of the structure moves (Wang, Davison 1973). */
 static flatgain_status prove_by_fixed_mode(struct fg_assembly *a, flatgain_error *error)
 {
@@ -101,9 +124,8 @@ static flatgain_status prove_by_fixed_mode(struct fg_assembly *a, flatgain_error
         const char *text =
             fg_arena_text(a->arena,
                           "The mode %s does not decay and no gain of this structure moves it; no dynamic "
-                          "controller of the same structure does either. It needs another actuator, another "
-                          "measurement%s.",
-                          name, a->restricted ? " or a freer pattern" : "");
+                          "controller of the same structure does either. %s.",
+                          name, cure_of_mode(a, mode));
         f->proof.kind = "fixed-mode";
         f->proof.text = text ? text : "";
         f->proof.re = mode->re;

@@ -3,6 +3,9 @@
 #include <math.h>
 #include <string.h>
 
+/* Two costs that agree to this, in percent, are equal but for rounding: `accept: 0` asks for no more. */
+static const double ROUNDING_PERCENT = 1e-6;
+
 static const char *or_empty(const char *text)
 {
     return text ? text : "";
@@ -26,17 +29,16 @@ static const char *cure_for_limit(struct fg_assembly *a)
     if (!chosen)
         return "";
     if (problem->reading == FG_START)
-        return "describe the disturbance and the sensors' noise (disturbance, noise, lag) instead of a start "
-               "to get a bound that can tell";
+        return "describe the disturbance and the sensors' noise (disturbance, noise, lag) instead of a start";
     if (fg_verdict_noise_free(problem, chosen)) {
         bool all = true;
         for (int i = 0; i < problem->p; i++)
             all = all && chosen[i];
         if (all)
-            return "no output has noise here: state the sensors' noise (noise and lag)";
+            return "state the sensors' noise (noise and lag); no output has any now";
         const char *names = fg_words_names(a->arena, problem->outputs, problem->p, chosen, 6);
         return or_empty(
-            fg_arena_text(a->arena, "state the sensor's noise (noise and lag); noise-free now: %s", names));
+            fg_arena_text(a->arena, "state the noise (noise and lag) of the outputs without any: %s", names));
     }
     bool any = false;
     bool *inputs = chosen + problem->p;
@@ -46,9 +48,58 @@ static const char *cure_for_limit(struct fg_assembly *a)
     }
     if (any) {
         const char *names = fg_words_names(a->arena, problem->inputs, problem->m, inputs, 6);
-        return or_empty(fg_arena_text(a->arena, "give every input a weight in R; free now: %s", names));
+        return or_empty(
+            fg_arena_text(a->arena, "give every input a weight in R; without one now: %s", names));
     }
     return "state the sensors' noise and a weight for every input";
+}
+
+/* How far a rung is above LQG, in percent; NAN when there is no such rung or number. */
+static double above_lqg(const struct fg_findings *f, const char *key)
+{
+    for (int k = 0; k < f->rungs; k++)
+        if (strcmp(f->ladder[k].key, key) == 0)
+            return f->ladder[k].above_lqg_percent;
+    return NAN;
+}
+
+/* What the user has already may be good enough as well: then nothing needs to change. */
+static const char *as_well(struct fg_assembly *a)
+{
+    const struct fg_findings *f = a->findings;
+    double accept = a->problem->accept_percent;
+    double today = f->outcome == FLATGAIN_JUDGED ? NAN : above_lqg(f, "today");
+    double none = above_lqg(f, "none");
+    if (none <= accept)
+        return or_empty(fg_arena_text(a->arena,
+                                      " So is no control at all, %s above: the plant may not need this gain.",
+                                      fg_words_percent(a->arena, none)));
+    if (today <= accept)
+        return or_empty(fg_arena_text(a->arena, " So is the gain in use today, %s above: it may stay.",
+                                      fg_words_percent(a->arena, today)));
+    return "";
+}
+
+/* What to change when this gain is not good enough. */
+static const char *refusal_advice(struct fg_assembly *a)
+{
+    const struct fg_findings *f = a->findings;
+    if (f->outcome == FLATGAIN_JUDGED)
+        return " Tuning may find a better gain.";
+    double free = above_lqg(f, "unstructured");
+    if (free <= a->problem->accept_percent)
+        return or_empty(fg_arena_text(
+            a->arena,
+            " Without your pattern and bounds a static gain would be good enough (%s above): free more "
+            "gains or widen the bounds.",
+            fg_words_percent(a->arena, free)));
+    if (!isnan(free))
+        return or_empty(
+            fg_arena_text(a->arena,
+                          " Even without your pattern and bounds the gap is %s: measure more, or use a "
+                          "dynamic controller.",
+                          fg_words_percent(a->arena, free)));
+    return " Measure more, or use a dynamic controller.";
 }
 
 static void judge_gap(struct fg_assembly *a)
@@ -68,32 +119,35 @@ static void judge_gap(struct fg_assembly *a)
         else
             f->verdict_text =
                 or_empty(fg_arena_text(a->arena,
-                                       "Cannot tell whether the gap is within %s: the benchmark is zero. To "
-                                       "get one that can tell, %s.",
+                                       "Cannot tell whether the gap is within %s: the benchmark is zero. For "
+                                       "one that can tell, %s.",
                                        asked, cure_for_limit(a)));
         return;
     }
     const char *gap = fg_words_percent(a->arena, f->gap_percent);
-    if (f->gap_percent <= accept) {
+    bool accepted = f->gap_percent <= accept + ROUNDING_PERCENT;
+    if (!accepted && strcmp(gap, asked) == 0) /* "10 % above, 10 % accepted" would puzzle */
+        gap = or_empty(fg_arena_text(a->arena, "%s %%", fg_words_number(a->arena, f->gap_percent, 6)));
+    if (accepted) {
         f->verdict = FG_VERDICT_ACCEPTED;
-        f->verdict_text =
-            or_empty(fg_arena_text(a->arena,
-                                   "Good enough, and proved: %s above the bound, %s accepted. No linear "
-                                   "controller on these measurements can do better by more than that.",
-                                   gap, asked));
+        f->verdict_text = or_empty(
+            fg_arena_text(a->arena,
+                          "Good enough, and proved: %s above the best that any linear controller can "
+                          "do on these measurements, %s accepted.%s",
+                          gap, asked, as_well(a)));
     } else if (f->lqg_attained) {
         f->verdict = FG_VERDICT_REFUSED;
         f->verdict_text = or_empty(
             fg_arena_text(a->arena,
                           "Not good enough: %s above what a dynamic controller on the same measurements "
-                          "reaches, %s accepted.",
-                          gap, asked));
+                          "reaches, %s accepted.%s",
+                          gap, asked, refusal_advice(a)));
     } else {
         f->verdict = FG_VERDICT_CANNOT_TELL;
         f->verdict_text = or_empty(
             fg_arena_text(a->arena,
                           "Cannot tell whether static is good enough (%s accepted): the gap is measured to a "
-                          "limit that no real controller reaches. To get a bound that can tell, %s.",
+                          "limit that no real controller reaches. For a bound that can tell, %s.",
                           asked, cure_for_limit(a)));
     }
 }
@@ -105,6 +159,8 @@ static const char *gap_phrase(struct fg_assembly *a)
     if (isnan(f->gap_percent) || f->verdict != FG_VERDICT_NONE) /* the verdict says it */
         return "";
     const char *gap = fg_words_percent(a->arena, f->gap_percent);
+    if (strcmp(gap, "0 %") == 0)
+        return ", as good as any linear controller on the same measurements";
     if (f->lqg_attained)
         return or_empty(
             fg_arena_text(a->arena, ", %s above the best linear controller on the same measurements", gap));
@@ -120,12 +176,24 @@ static const char *not_found_summary(struct fg_assembly *a)
     struct fg_findings *f = a->findings;
     const struct fg_search_answer *s = &a->answer;
     bool discrete = a->problem->setting == FG_DISCRETE;
-    const char *near = fg_words_number(a->arena, s->abscissa, 4);
+    double fastest = discrete ? 1 : 0;
+    for (int k = 0; k < a->closed.count; k++)
+        fastest = fmax(fastest, hypot(a->closed.mode[k].re, a->closed.mode[k].im));
+    /* a double pole on the boundary is only known to the root of the rounding */
+    double at_edge = 1e-6 * fastest;
+    bool edge = a->closed.count > 0 && fabs(s->abscissa - (discrete ? 1 : 0)) <= 1e-3 * at_edge;
+    const char *near =
+        edge ? "the loop at the edge of stability"
+             : or_empty(fg_arena_text(a->arena, "%s %s",
+                                      discrete ? "a spectral radius of" : "a largest real part of",
+                                      fg_words_number(a->arena, s->abscissa, 4)));
     const char *mode = "";
     if (a->closed.count > 0) {
         const struct fg_mode *worst = &a->closed.mode[0];
-        mode = fg_words_mode(a->arena, worst->re, worst->im, worst->states);
-        mode = or_empty(fg_arena_text(a->arena, " What stays unstable there is the mode %s.", mode));
+        double re = fabs(worst->re) <= at_edge ? 0 : worst->re,
+               im = fabs(worst->im) <= at_edge ? 0 : worst->im;
+        mode = fg_words_mode(a->arena, re, im, worst->states);
+        mode = or_empty(fg_arena_text(a->arena, " What does not decay there is the mode %s.", mode));
     }
     const char *wider = "";
     if (a->has_unstructured && isfinite(a->unstructured.cost))
@@ -137,8 +205,8 @@ static const char *not_found_summary(struct fg_assembly *a)
     return or_empty(fg_arena_text(
         a->arena,
         "No stabilising gain was found in %d starts. This is not a proof that none exists. The "
-        "closest gain left %s %s.%s%s%s",
-        f->search.starts, discrete ? "a spectral radius of" : "a largest real part of", near, mode, wider,
+        "closest gain left %s.%s%s%s",
+        f->search.starts, near, mode, wider,
         wider[0] ? "" : " Try more starts (--starts), another measurement, or a dynamic controller."));
 }
 
@@ -171,6 +239,11 @@ static const char *summarise(struct fg_assembly *a)
                 "Found a stabilising gain of cost %s, but the search stalled before it reached a "
                 "minimum: a better gain is likely.",
                 cost));
+        if (a->problem->pattern.count == 0)
+            return or_empty(fg_arena_text(
+                a->arena,
+                "You fixed every gain, so nothing was searched: this gain stabilises, its cost is %s%s.",
+                cost, gap_phrase(a)));
         if (a->answer.end == FG_SEARCH_FLAT)
             return or_empty(fg_arena_text(a->arena,
                                           "The cost is %s whatever the gain: any stabilising gain is as good "

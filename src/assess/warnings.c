@@ -55,8 +55,9 @@ static void warn_hidden(struct fg_assembly *a)
         return;
     int stuck_count = 0, blind_count = 0;
     for (int i = 0; i < modes->count; i++) {
-        stuck[i] = modes->mode[i].uncontrollable;
-        blind[i] = modes->mode[i].unobservable && !stuck[i];
+        bool lag = fg_is_sensor_lag(a, &modes->mode[i]);
+        stuck[i] = modes->mode[i].uncontrollable && !lag;
+        blind[i] = modes->mode[i].unobservable && !modes->mode[i].uncontrollable && !lag;
         stuck_count += stuck[i];
         blind_count += blind[i];
     }
@@ -208,17 +209,20 @@ static const char *others(struct fg_assembly *a, int flagged, const char *side)
 static void warn_margins(struct fg_assembly *a)
 {
     const struct fg_findings *f = a->findings;
-    const struct fg_loop_margin *phase = NULL, *gain = NULL, *peak = NULL;
-    int phases = 0, gains = 0, peaks = 0;
+    const struct fg_loop_margin *phase = NULL, *gain = NULL, *drop = NULL, *peak = NULL;
+    int phases = 0, gains = 0, drops = 0, peaks = 0;
     for (int i = 0; i < f->margins; i++) {
         const struct fg_loop_margin *loop = &f->margin[i];
         bool small_phase = loop->phase_deg < LEAST_PHASE_DEG, small_gain = loop->gain_up < LEAST_GAIN_UP;
+        bool small_drop = loop->gain_down > 1 / LEAST_GAIN_UP;
         if (small_phase && (phases++ == 0 || loop->phase_deg < phase->phase_deg))
             phase = loop;
         if (small_gain && (gains++ == 0 || loop->gain_up < gain->gain_up))
             gain = loop;
+        if (small_drop && (drops++ == 0 || loop->gain_down > drop->gain_down))
+            drop = loop;
         /* a small margin in phase or gain says the same in words that more people know */
-        if (!small_phase && !small_gain && loop->peak_sensitivity > MOST_SENSITIVITY &&
+        if (!small_phase && !small_gain && !small_drop && loop->peak_sensitivity > MOST_SENSITIVITY &&
             (peaks++ == 0 || loop->peak_sensitivity > peak->peak_sensitivity))
             peak = loop;
     }
@@ -239,7 +243,25 @@ static void warn_margins(struct fg_assembly *a)
                               a->problem->inputs[gain->input].name,
                               fg_words_number(a->arena, gain->gain_up, 3), LEAST_GAIN_UP,
                               others(a, gains, "below")));
-    if (peak)
+    if (drop)
+        fg_warn(
+            a->findings, "gain-margin",
+            fg_arena_text(a->arena,
+                          "The loop at %s becomes unstable when its gain falls to %s of what it is (common "
+                          "practice: %g or less)%s. A smaller weight in R for this input, or wider bounds, "
+                          "usually help.",
+                          a->problem->inputs[drop->input].name, fg_words_number(a->arena, drop->gain_down, 3),
+                          1 / LEAST_GAIN_UP, others(a, drops, "above")));
+    if (peak && peak->peak_frequency == 0)
+        fg_warn(
+            a->findings, "peak-sensitivity",
+            fg_arena_text(a->arena,
+                          "The loop at %s has a peak sensitivity of %s at low frequencies (common practice: "
+                          "at most %g)%s: it makes slow disturbances larger.",
+                          a->problem->inputs[peak->input].name,
+                          fg_words_number(a->arena, peak->peak_sensitivity, 3), MOST_SENSITIVITY,
+                          others(a, peaks, "above")));
+    else if (peak)
         fg_warn(a->findings, "peak-sensitivity",
                 fg_arena_text(
                     a->arena,
@@ -264,6 +286,8 @@ static void warn_search(struct fg_assembly *a)
                               "The best start did not converge (residual %s). Raise --starts, or "
                               "check the scaling of weights and units.",
                               fg_words_number(a->arena, s->residual, 3)));
+    if (a->problem->pattern.count == 0) /* nothing was searched */
+        return;
     if (finished && s->end == FG_SEARCH_FLAT)
         fg_warn(a->findings, "flat-cost",
                 "The cost does not depend on the gain: the outputs, inputs, weights and disturbances do not "
@@ -294,7 +318,14 @@ static bool is_zero_cost(const struct fg_assembly *a)
         seen = fmax(seen, FG_AT(a->problem->Q, i, i));
         reached = fmax(reached, FG_AT(a->problem->W, i, i));
     }
-    return reached > 0 && fabs(a->findings->cost) <= ZERO_COST * seen * reached / fastest;
+    if (!(reached > 0 && fabs(a->findings->cost) <= ZERO_COST * seen * reached / fastest))
+        return false;
+    /* that bound mixes the units of the states; a mode that is disturbed and weighted has a cost in any units
+     */
+    for (int i = 0; i < a->closed.count; i++)
+        if (!a->closed.mode[i].unweighted && !a->closed.mode[i].undisturbed)
+            return false;
+    return true;
 }
 
 static void warn_zero(struct fg_assembly *a)

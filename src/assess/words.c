@@ -22,9 +22,7 @@ const char *fg_words_number(struct fg_arena *arena, double value, int digits)
 const char *fg_words_percent(struct fg_arena *arena, double percent)
 {
     char number[FG_NUMBER_SIZE];
-    if (fabs(percent) < 0.005)
-        percent = 0;
-    fg_number_round(percent, fabs(percent) < 1 ? 2 : fabs(percent) < 1000 ? 3 : 4, number);
+    fg_number_percent(percent, number);
     const char *text = fg_arena_text(arena, "%s %%", number);
     return text ? text : "";
 }

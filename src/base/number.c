@@ -50,6 +50,19 @@ void fg_number_round(double value, int digits, char text[FG_NUMBER_SIZE])
     mark_to_point(text);
 }
 
+void fg_number_percent(double percent, char text[FG_NUMBER_SIZE])
+{
+    double size = fabs(percent);
+    if (size < 0.005)
+        percent = 0;
+    if (size >= 1e6)
+        snprintf(text, FG_NUMBER_SIZE, percent > 0 ? "over 1 million" : "below -1 million");
+    else if (size >= 1e4)
+        snprintf(text, FG_NUMBER_SIZE, "%.0f", 100 * round(percent / 100));
+    else
+        fg_number_round(percent, size < 1 ? 2 : size < 1000 ? 3 : 4, text);
+}
+
 enum fg_number_fault fg_number_read(const char *text, size_t length, double *value)
 {
     const char *at = text, *end = text + length;

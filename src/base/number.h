@@ -13,6 +13,9 @@ void fg_number_exact(double value, char text[FG_NUMBER_SIZE]);
 /* At most `digits` significant digits, e.g. 5: "0.12346", "1.2346e-05"; "inf", "nan" in words. */
 void fg_number_round(double value, int digits, char text[FG_NUMBER_SIZE]);
 
+/* A percentage for people: "0", "0.69", "12.3", "1960", "64600", "over 1 million"; below 0.005 it is 0. */
+void fg_number_percent(double percent, char text[FG_NUMBER_SIZE]);
+
 enum fg_number_fault { FG_NUMBER_OK, FG_NUMBER_NOT, FG_NUMBER_TOO_LARGE };
 
 /* Reads a whole string of `length` bytes as a decimal number: [+-] digits [. digits] [e [+-] digits].

@@ -12,8 +12,7 @@
 enum {
     NARROWEST = 40,
     FEW_POLES = 6, /* lines of poles without --verbose */
-    POLE = 28,     /* columns of the table of poles */
-    DAMPING = 8,
+    DAMPING = 9,   /* columns of the table of poles */
     FALL = 15
 };
 
@@ -77,24 +76,50 @@ static void put_whole_names(const struct fg_page *page, const char *names, int r
     fg_put(page, FG_FAINT, part);
 }
 
+static const char *pole_text(const struct fg_pole *pole, char text[2 * FG_NUMBER_SIZE + 16])
+{
+    char re[FG_NUMBER_SIZE], im[FG_NUMBER_SIZE];
+    fg_number_round(pole->re, 5, re);
+    fg_number_round(pole->im, 5, im);
+    snprintf(text, 2 * FG_NUMBER_SIZE + 16, pole->im > 0 ? "%s +/- %si" : "%s", re, im);
+    return text;
+}
+
+/* Columns of the longest pole that is shown, at least those of the head. */
+static int pole_columns(const struct fg_findings *f, const struct fg_pole *poles, bool all)
+{
+    char text[2 * FG_NUMBER_SIZE + 16];
+    int columns = 4;
+    for (int k = 0, lines = 0; k < f->order && (all || lines < FEW_POLES); k++) {
+        if (poles[k].im < 0)
+            continue;
+        lines++;
+        int needed = fg_columns(pole_text(&poles[k], text));
+        columns = needed > columns ? needed : columns;
+    }
+    return columns;
+}
+
 static void put_poles(const struct fg_page *page, const struct fg_findings *f, const char *name,
                       const struct fg_pole *poles, bool all)
 {
     if (!poles)
         return;
     bool discrete = f->problem->setting == FG_DISCRETE;
-    char remark[80], number[FG_NUMBER_SIZE], other[FG_NUMBER_SIZE], text[2 * FG_NUMBER_SIZE + 16];
-    int lines = 0, left = 0;
+    char remark[80], number[FG_NUMBER_SIZE], text[2 * FG_NUMBER_SIZE + 16];
+    int lines = 0, left = 0, width = pole_columns(f, poles, all);
     for (int k = 0; k < f->order; k++)
         left += poles[k].im >= 0;
     snprintf(remark, sizeof remark, "slowest first%s",
              !all && left > FEW_POLES ? "; --verbose shows all" : "");
     fg_put_heading(page, name, remark);
     snprintf(text, sizeof text, "falls to 37 %%");
-    fg_put_left(page, FG_FAINT, "  pole", 2 + POLE);
+    fg_put_left(page, FG_FAINT, "  pole", 2 + width);
     fg_put_right(page, FG_FAINT, discrete ? "radius" : "damping", DAMPING);
     fg_put_right(page, FG_FAINT, text, FALL);
-    fg_put(page, FG_FAINT, "  states");
+    int room = page->width - 2 - width - DAMPING - FALL - 2; /* for the states */
+    if (room >= 6)
+        fg_put(page, FG_FAINT, "  states");
     fg_newline(page);
     for (int k = 0; k < f->order; k++) {
         const struct fg_pole *pole = &poles[k];
@@ -107,15 +132,9 @@ static void put_poles(const struct fg_page *page, const struct fg_findings *f, c
             break;
         }
         lines++;
-        fg_number_round(pole->re, 5, number);
-        fg_number_round(pole->im, 5, other);
-        if (pole->im > 0)
-            snprintf(text, sizeof text, "%s +/- %si", number, other);
-        else
-            snprintf(text, sizeof text, "%s", number);
         bool stable = discrete ? pole->speed < 1 : pole->re < 0;
         fg_put(page, FG_PLAIN, "  ");
-        fg_put_left(page, stable ? FG_PLAIN : FG_BAD, text, POLE);
+        fg_put_left(page, stable ? FG_PLAIN : FG_BAD, pole_text(pole, text), width);
         fg_put_right(page, FG_PLAIN, fg_text_number(discrete ? pole->speed : pole->damping, 3, false, number),
                      DAMPING);
         if (stable)
@@ -128,9 +147,9 @@ static void put_poles(const struct fg_page *page, const struct fg_findings *f, c
         if (text[length - 1] == ' ')
             text[length - 1] = '\0';
         fg_put_right(page, stable ? FG_PLAIN : FG_BAD, text, FALL);
-        if (pole->states && pole->states[0]) {
+        if (pole->states && pole->states[0] && room >= 6) {
             fg_put(page, FG_PLAIN, "  ");
-            put_whole_names(page, pole->states, page->width - 2 - POLE - DAMPING - FALL - 2);
+            put_whole_names(page, pole->states, room);
         }
         fg_newline(page);
     }
@@ -181,7 +200,10 @@ static void put_margins(const struct fg_page *page, const struct fg_findings *f)
         return;
     snprintf(line, sizeof line, "all loops together: peak sensitivity %s",
              fg_text_number(f->peak_sensitivity, 3, false, number));
-    if (!isnan(f->peak_frequency)) /* NAN: the peak is at infinite frequency */
+    /* a peak of 1 is no peak; NAN: it is at infinite frequency */
+    if (f->peak_frequency == 0 && f->peak_sensitivity > 1.005)
+        snprintf(line + strlen(line), sizeof line - strlen(line), " at low frequencies");
+    else if (!isnan(f->peak_frequency) && f->peak_sensitivity > 1.005)
         snprintf(line + strlen(line), sizeof line - strlen(line), " at %s rad per %s",
                  fg_text_number(f->peak_frequency, 3, false, low), time_unit(f->problem));
     fg_put_wrapped(page, FG_FAINT, "  ", line);
@@ -297,7 +319,8 @@ static void put_quiet(const struct fg_page *page, const struct fg_findings *f)
     }
     if (!isnan(f->gap_percent)) {
         fg_put(page, FG_PLAIN, ", above LQG ");
-        fg_put(page, FG_PLAIN, fg_text_number(f->gap_percent, 4, false, number));
+        fg_number_percent(f->gap_percent, number);
+        fg_put(page, FG_PLAIN, number);
         fg_put(page, FG_PLAIN, " %");
     }
     if (f->verdict != FG_VERDICT_NONE)

@@ -164,6 +164,49 @@ static void as_list(const struct fg_page *page, const struct fg_findings *f, boo
     }
 }
 
+static int add_units(struct fg_text *text, const struct fg_signal *signal, int count, int said)
+{
+    for (int k = 0; k < count; k++) {
+        if (!signal[k].unit[0])
+            continue;
+        fg_text_add(text, said++ ? ", " : "");
+        fg_text_add(text, signal[k].name);
+        fg_text_add(text, " ");
+        fg_text_add(text, signal[k].unit);
+    }
+    return said;
+}
+
+/* The units that the user gave: an entry of K is in units of its input per unit of its output. */
+static void put_units(const struct fg_page *page, const struct flatgain_problem *problem)
+{
+    struct fg_text text = {0};
+    fg_text_add(&text, "in units of the input per unit of the output: ");
+    int said = add_units(&text, problem->inputs, problem->m, 0);
+    said = add_units(&text, problem->outputs, problem->p, said);
+    if (text.failed)
+        page->out->failed = true;
+    else if (said > 0)
+        fg_put_wrapped(page, FG_FAINT, "  ", text.at);
+    fg_text_free(&text);
+}
+
+/* A filter made in the PLC has to be programmed with the gain. */
+static void put_filters(const struct fg_page *page, const struct flatgain_problem *problem)
+{
+    char number[FG_NUMBER_SIZE], line[400];
+    for (int j = 0; j < problem->p; j++) {
+        const struct fg_signal *output = &problem->outputs[j];
+        if (!output->lag_in_plc || !(output->lag > 0))
+            continue;
+        snprintf(line, sizeof line,
+                 "Part of the law: filter %s in the PLC with a time constant of %s %s, as the model does.",
+                 output->name, fg_text_number(output->lag, 6, false, number),
+                 problem->time_unit[0] ? problem->time_unit : "time units");
+        fg_put_wrapped(page, FG_CAUTION, "  ", line);
+    }
+}
+
 void fg_text_gain(const struct fg_page *page, const struct fg_findings *f, bool exact)
 {
     const struct flatgain_problem *problem = f->problem;
@@ -181,7 +224,7 @@ void fg_text_gain(const struct fg_page *page, const struct fg_findings *f, bool 
         if (fg_columns(problem->outputs[j].name) > LONGEST_NAME ||
             2 + left + column_width(f, j, exact, marked) > page->width)
             too_wide = true;
-    fg_put_heading(page, "Gain K", "u = u0 - K (y - y0); a row for each input, a column for each output");
+    fg_put_heading(page, "Gain K", "u = u0 - K (y - y0); rows: inputs, columns: outputs");
     if (too_wide)
         as_list(page, f, exact, marked);
     else
@@ -191,4 +234,6 @@ void fg_text_gain(const struct fg_page *page, const struct fg_findings *f, bool 
                        any_fixed && any_bound ? "[ ] fixed by you, * on its bound"
                        : any_fixed            ? "[ ] fixed by you"
                                               : "* on its bound");
+    put_units(page, problem);
+    put_filters(page, problem);
 }

@@ -50,10 +50,8 @@ static void put_percent(const struct fg_page *page, double percent)
         fg_put_right(page, FG_FAINT, "-", ABOVE);
         return;
     }
-    if (fabs(percent) < 0.005)
-        percent = 0;
-    fg_number_round(percent, fabs(percent) < 1 ? 2 : fabs(percent) < 1000 ? 3 : 4, number);
-    snprintf(text, sizeof text, "%s%s %%", percent > 0 ? "+" : "", number);
+    fg_number_percent(percent, number);
+    snprintf(text, sizeof text, "%s%s %%", percent >= 0.005 && percent < 1e6 ? "+" : "", number);
     fg_put_right(page, FG_PLAIN, text, ABOVE);
 }
 
@@ -62,8 +60,7 @@ static void put_price(const struct fg_page *page, const struct fg_rung *rung)
     if (isnan(rung->price_percent) || !rung->price[0])
         return;
     char number[FG_NUMBER_SIZE], line[160];
-    double percent = fabs(rung->price_percent) < 0.005 ? 0 : rung->price_percent;
-    fg_number_round(percent, fabs(percent) < 1 ? 2 : fabs(percent) < 1000 ? 3 : 4, number);
+    fg_number_percent(rung->price_percent, number);
     snprintf(line, sizeof line, "%s: %s %%", rung->price, number);
     fg_put_wrapped(page, FG_FAINT, "      ", line);
 }
@@ -117,11 +114,12 @@ void fg_text_ladder(const struct fg_page *page, const struct fg_findings *f, boo
             fg_put_wrapped(page, FG_FAINT, "      ", why);
         put_price(page, rung);
     }
-    if (!isnan(f->captured_percent) && f->has_gain) {
+    bool final = f->outcome != FLATGAIN_BOUNDARY && f->outcome != FLATGAIN_UNBOUNDED;
+    if (!isnan(f->captured_percent) && f->has_gain && final) {
         char number[FG_NUMBER_SIZE], line[160];
         fg_number_round(f->captured_percent, 3, number);
         snprintf(line, sizeof line,
-                 "Of what control can gain at all on these measurements, this gain gets %s %%.", number);
+                 "This gain gets %s %% of all that control can gain on these measurements.", number);
         fg_put_wrapped(page, FG_PLAIN, "  ", line);
     }
     if (exact && !isnan(f->cost)) {
