@@ -104,6 +104,8 @@ flatgain_status fg_cell_number(const struct fg_cells *cells, const struct fg_cel
         return FLATGAIN_OK;
     if (looks_infinite(cell->text, cell->length))
         return fg_cells_fail(cells, cell, "%s is not a finite number; expected one%s", quoted, also);
+    if (cell->length > 0 && cell->text[cell->length - 1] == '%')
+        return fg_cells_fail(cells, cell, "%s is not a number; expected it without the %% sign", quoted);
     if (memchr(cell->text, ';', cell->length))
         return fg_cells_fail(cells, cell,
                              "%s is not a number; expected rows on lines of their own, entries separated by "

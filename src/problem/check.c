@@ -86,8 +86,12 @@ flatgain_status fg_check_size(const struct fg_check *check, const char *key, con
         memcpy(also, ", ", 2);
         describe(check->problem, cols, also + 2, sizeof also - 2);
     }
-    return fg_check_fail(check, key, "%s is %d x %d; expected %d x %d (%s%s)%s", what, M.rows, M.cols, r, c,
-                         from, also, M.rows == c && M.cols == r ? "; it looks transposed" : "");
+    return fg_check_fail(
+        check, key, "%s is %d x %d; expected %d x %d (%s%s)%s", what, M.rows, M.cols, r, c, from, also,
+        M.rows == c && M.cols == r                       ? "; it looks transposed"
+        : r == 1 && c == 1 && M.rows == 1 && M.cols == 2 ? "; a comma separates entries, the decimal mark "
+                                                           "is a point"
+                                                         : "");
 }
 
 static flatgain_status sizes(const struct fg_check *check)

@@ -7,6 +7,14 @@
 #include "problem/reader.h"
 #include "problem/source.h"
 
+static bool is_ascii(const char *text, size_t length)
+{
+    for (size_t i = 0; i < length; i++)
+        if ((unsigned char)text[i] > 0x7f)
+            return false;
+    return true;
+}
+
 flatgain_status fg_read_text(const struct fg_reader *reader, const struct fg_node *node, const char *what,
                              size_t longest, const char **text)
 {
@@ -19,7 +27,9 @@ flatgain_status fg_read_text(const struct fg_reader *reader, const struct fg_nod
     if (length == 0)
         return FG_READER_FAIL(reader, node, "%s is empty; expected a text", what);
     if (length > longest)
-        return FG_READER_FAIL(reader, node, "%s has %zu bytes; expected at most %zu", what, length, longest);
+        return FG_READER_FAIL(reader, node, "%s has %zu bytes%s; expected at most %zu", what, length,
+                              is_ascii(node->text, length) ? "" : " (letters outside ASCII take 2 to 4)",
+                              longest);
     for (size_t i = 0; i < length; i++) {
         unsigned char c = (unsigned char)node->text[i];
         bool high = c == 0xc2 && (unsigned char)node->text[i + 1] < 0xa0; /* U+0080 to U+009F */

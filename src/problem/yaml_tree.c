@@ -90,12 +90,20 @@ static flatgain_status syntax_error(const struct builder *builder, const yaml_pa
     const char *problem = parser->problem ? parser->problem : "syntax error";
     if (strstr(problem, "cannot start any token") && tab_there(tree, parser->problem_mark))
         return fail(builder, parser->problem_mark, "a tab in the indentation; expected blanks");
+    if (strstr(problem, "mapping values are not allowed"))
+        return fail(builder, parser->problem_mark,
+                    "not valid YAML: a colon inside a value; expected quotes around a text with a colon, and "
+                    "keys of a section that begin in the same column");
     char text[420], context[200] = "";
     if (parser->context)
         snprintf(context, sizeof context, " %.100s that starts at line %zu, column %zu", parser->context,
                  parser->context_mark.line + 1, parser->context_mark.column + 1);
-    snprintf(text, sizeof text, "not valid YAML: %.150s%s; expected something else here or just before",
-             problem, context);
+    /* a row or key that begins left of, or right of, its neighbours ends the block too early */
+    bool indentation = strstr(problem, "did not find expected key") && parser->context &&
+                       strstr(parser->context, "block mapping");
+    snprintf(text, sizeof text, "not valid YAML: %.150s%s; expected %s", problem, context,
+             indentation ? "the same indentation for all rows of a block and for all keys of a section"
+                         : "something else here or just before");
     return fail(builder, parser->problem_mark, text);
 }
 
