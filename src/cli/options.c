@@ -3,6 +3,7 @@
 #include <errno.h>
 #include <stdlib.h>
 #include <string.h>
+#include <unistd.h>
 
 #include "cli/messages.h"
 #include "flatgain.h"
@@ -113,7 +114,11 @@ static int read_command(const char *word, enum cli_command *command)
             return CLI_USAGE;
         }
     const char *near = nearest(word, COMMANDS, COMMAND_COUNT);
-    if (near)
+    if (strcmp(word, "help") == 0 || strcmp(word, "version") == 0)
+        cli_complain("unknown command %s; flatgain --%s is what you want", word, word);
+    else if (access(word, F_OK) == 0)
+        cli_complain("a file without a command; expected flatgain tune %s (or judge, inspect)", word);
+    else if (near)
         cli_complain("unknown command %s; the nearest is %s", word, near);
     else
         cli_complain("unknown command %s; expected tune, judge or inspect", word);
@@ -221,6 +226,10 @@ static int read_option(int argc, char **argv, int *at, struct cli_options *optio
                 return CLI_USAGE;
             }
             value = argv[++*at];
+        }
+        if ((k == O_OUT || k == O_GAIN) && (*given & 1 << k)) { /* one of the two would be lost */
+            cli_complain("%s is given twice; expected it once", option->name);
+            return CLI_USAGE;
         }
         *given |= 1 << k;
         return set(options, k, value ? value : "");
