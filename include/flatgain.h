@@ -172,10 +172,11 @@ typedef struct flatgain_options {
 FLATGAIN_API flatgain_options flatgain_options_default(void);
 
 /* Finds the gain: K = argmin J(K) over the gains of the given pattern and bounds that stabilise the plant;
- * many starts, local minima, the best of them. With it the benchmarks and the margins of the loops. options
- * NULL means the defaults result   out; NULL on error; to be freed. "Not found" and the like are results, not
- * errors Errors: BAD_ARGUMENT (an option out of its range), NUMERICAL, NO_MEMORY. Source of the method, with
- * equations and references: docs/method.md. */
+ * many starts, local minima, the best of them. With it the benchmarks and the margins of the loops.
+ *   options  NULL means the defaults
+ *   result   out; NULL on error; to be freed. "Not found" and the like are results, not errors
+ * Errors: BAD_ARGUMENT (an option out of its range), NUMERICAL, NO_MEMORY.
+ * Source of the method, with equations and references: docs/method.md. */
 FLATGAIN_API flatgain_status flatgain_tune(const flatgain_problem *problem, const flatgain_options *options,
                                            flatgain_result **result, flatgain_error *error);
 
@@ -188,7 +189,9 @@ FLATGAIN_API flatgain_status flatgain_judge(const flatgain_problem *problem, con
                                             flatgain_error *error);
 
 /* Checks and explains the problem: open-loop poles, hidden modes, benchmarks, a proof when no gain
- * stabilises. options  NULL means the defaults; none of them matters here Errors: as flatgain_tune. */
+ * stabilises.
+ *   options  NULL means the defaults; none of them matters here
+ * Errors: as flatgain_tune. */
 FLATGAIN_API flatgain_status flatgain_inspect(const flatgain_problem *problem,
                                               const flatgain_options *options, flatgain_result **result,
                                               flatgain_error *error);
@@ -212,8 +215,8 @@ typedef enum flatgain_cost {
     FLATGAIN_COST_LQR       /* every state known */
 } flatgain_cost;
 /* In the units of x'Qx: per step or as the average over time; with a start, summed over steps or integrated
- * over time. NAN where the cost does not exist (unstable, not given, not computable). For every problem J_LQR
- * <= J_LQG <= J(K). Formulas and sources: docs/method.md. */
+ * over time. NAN where the cost does not exist (unstable, not given, not computable). For every problem
+ * J_LQR <= J_LQG <= J(K). Formulas and sources: docs/method.md. */
 FLATGAIN_API double flatgain_result_cost(const flatgain_result *result, flatgain_cost which);
 /* 100 (J(K) - J_LQG) / J_LQG, NAN where it does not exist. */
 FLATGAIN_API double flatgain_result_gap_percent(const flatgain_result *result);
@@ -230,9 +233,11 @@ typedef struct flatgain_style {
 } flatgain_style;
 
 /* The result as text for people, or as one JSON object (docs/result-format.md) with a final newline; UTF-8,
- * numbers with a point whatever the locale, in JSON so exact that they read back as they were. style   NULL:
- * all zeros; JSON minds `timing` only text    out, NUL-terminated, NULL on error; to be freed with
- * flatgain_text_free length  out, without the NUL; may be NULL Errors: NO_MEMORY, BAD_ARGUMENT. */
+ * numbers with a point whatever the locale, in JSON so exact that they read back as they were.
+ *   style   NULL: all zeros; JSON minds `timing` only
+ *   text    out, NUL-terminated, NULL on error; to be freed with flatgain_text_free
+ *   length  out, without the NUL; may be NULL
+ * Errors: NO_MEMORY, BAD_ARGUMENT. */
 FLATGAIN_API flatgain_status flatgain_result_text(const flatgain_result *result, const flatgain_style *style,
                                                   char **text, size_t *length);
 FLATGAIN_API flatgain_status flatgain_result_json(const flatgain_result *result, const flatgain_style *style,
