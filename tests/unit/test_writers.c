@@ -245,13 +245,19 @@ END_TEST
 START_TEST(text_says_what_matters)
 {
     struct sample *s = make_sample(2, "y%d");
-    char *text = text_of(s, (flatgain_style){0});
+    s->outputs[1].lag = 0.25;
+    s->outputs[1].lag_in_plc = true;
+    char *text = text_of(s, (flatgain_style){.width = 100});
     ck_assert_ptr_nonnull(strstr(text, "u = u0 - K (y - y0)"));
     ck_assert_ptr_nonnull(strstr(text, "Zulauf"));
     ck_assert_ptr_nonnull(strstr(text, "[0]"));      /* fixed by the user */
     ck_assert_ptr_nonnull(strstr(text, "*"));        /* on its bound */
     ck_assert_ptr_nonnull(strstr(text, "unstable")); /* the rung without control */
     ck_assert_ptr_nonnull(strstr(text, "price of staying static: 33.3 %"));
+    ck_assert_ptr_nonnull(strstr(text, "price of not measuring every state: over 1 million %"));
+    ck_assert_ptr_nonnull(strstr(text, "unit of the output: drum speed rpm\n")); /* the only unit given */
+    ck_assert_ptr_nonnull(strstr(text, "filter y2 in the PLC with a time constant of 0.25 s"));
+    ck_assert_ptr_null(strstr(text, "filter y1 in the PLC"));
     ck_assert_ptr_nonnull(strstr(text, "commission with limits"));
     ck_assert_ptr_null(strstr(text, "seconds")); /* not asked for */
     free(text);
