@@ -17,12 +17,67 @@ enum {
     SIDE = LEAF /* scratch of the kernel */
 };
 
+/* Solves the k x k system M z = r (k <= 4, row-major M) by elimination with full row pivoting. */
+static void solve_small(int k, double *M, double *r)
+{
+    for (int c = 0; c < k; c++) {
+        int best = c;
+        for (int i = c + 1; i < k; i++)
+            if (fabs(M[i * k + c]) > fabs(M[best * k + c]))
+                best = i;
+        if (best != c) {
+            for (int j = c; j < k; j++) {
+                double keep = M[c * k + j];
+                M[c * k + j] = M[best * k + j];
+                M[best * k + j] = keep;
+            }
+            double keep = r[c];
+            r[c] = r[best];
+            r[best] = keep;
+        }
+        double pivot = 1 / M[c * k + c];
+        for (int i = c + 1; i < k; i++) {
+            double factor = M[i * k + c] * pivot;
+            for (int j = c + 1; j < k; j++)
+                M[i * k + j] -= factor * M[c * k + j];
+            r[i] -= factor * r[c];
+        }
+    }
+    for (int c = k - 1; c >= 0; c--) {
+        for (int j = c + 1; j < k; j++)
+            r[c] -= M[c * k + j] * r[j];
+        r[c] /= M[c * k + c];
+    }
+}
+
 /* Real solution of s y1 - d y2 = t1, d y1 + s y2 = t2: no cancellation in the denominator. */
 static void rotate_back(double s, double d, double *t1, double *t2)
 {
     double scale = 1 / (s * s + d * d), y1 = (s * *t1 + d * *t2) * scale;
     *t2 = (s * *t2 - d * *t1) * scale;
     *t1 = y1;
+}
+
+/* Balanced pairs have |b0| and |c0| within this factor squared; the closed form below is for those. */
+static const double BALANCED = 4;
+
+/* The same by elimination, for pairs that are nearly real and defective: there S is so far from the identity
+ * that the closed form would lose digits. */
+static void solve_unbalanced_pairs(bool discrete, const double *a, int lda, const double *b, int ldb,
+                                   double *r)
+{
+    double M[16] = {0};
+    for (int j = 0; j < 2; j++)
+        for (int i = 0; i < 2; i++) {
+            double *row = M + (j * 2 + i) * 4;
+            for (int l = 0; l < 2; l++)
+                for (int h = 0; h < 2; h++) {
+                    double ab = a[i + h * lda] * b[j + l * ldb];
+                    double sum = (j == l ? a[i + h * lda] : 0) + (i == h ? b[j + l * ldb] : 0);
+                    row[l * 2 + h] = discrete ? ab - (i == h && j == l) : sum;
+                }
+        }
+    solve_small(4, M, r);
 }
 
 /* Two complex pairs. dgees leaves a = [a0 b0; c0 a0] with b0 c0 < 0, that is a = S (a0 I + w J) S^-1 with
@@ -35,6 +90,10 @@ static void rotate_back(double s, double d, double *t1, double *t2)
 static void solve_pairs(bool discrete, const double *a, int lda, const double *b, int ldb, double *r)
 {
     double sa = sqrt(-a[1] / a[lda]), sb = sqrt(-b[1] / b[ldb]);
+    if (!(fmax(sa, sb) < BALANCED && fmin(sa, sb) > 1 / BALANCED)) {
+        solve_unbalanced_pairs(discrete, a, lda, b, ldb, r);
+        return;
+    }
     double wa = a[lda] * sa, wb = b[ldb] * sb, a0 = a[0], b0 = b[0];
     double T11 = r[0], T21 = r[1] / sa, T12 = r[2] / sb, T22 = r[3] / (sa * sb);
     double t1 = 0.5 * (T11 + T22), t2 = 0.5 * (T12 - T21), t3 = 0.5 * (T11 - T22), t4 = 0.5 * (T12 + T21);

@@ -43,7 +43,7 @@ def seconds_of(command):
 
 def main():
     script = os.path.join(os.path.dirname(os.path.abspath(__file__)), "script_tuner.py")
-    worst = 0
+    worst, other = 0, 0
     print(f"{'n':>4} {'m x p':>6} | {'script ms':>10} {'search ms':>10} {'ratio':>6} {'costs':>6} {'same J to':>10} | {'script s':>9} {'tune s':>8} {'ratio':>6} | target")
     for n, target in TARGETS.items():
         random = np.random.default_rng(n)
@@ -64,10 +64,13 @@ def main():
                     row[5] = seconds_of([sys.argv[2], "tune", file.name])[0]
             rows.append(row)
         table = np.array(rows)
-        worst = max(worst, table[:, 3].max())
+        same = table[:, 3] < 1e-3 # else the two descents ended in different local minima
+        other += int((~same).sum())
+        agree = table[same, 3].max() if same.any() else np.nan
+        worst = max(worst, agree)
         ratio = float(np.median(table[:, 0] / table[:, 1]))
-        print(f"{n:4d} {m} x {p:<2d} | {1e3 * np.median(table[:, 0]):10.2f} {1e3 * np.median(table[:, 1]):10.3f} {ratio:6.0f} {np.median(table[:, 2]):6.0f} {table[:, 3].max():10.1e} | {table[0, 4]:9.2f} {table[0, 5]:8.3f} {table[0, 4] / table[0, 5]:6.0f} | {target}")
-    print(f"largest relative difference of the optimum: {worst:.1e}")
+        print(f"{n:4d} {m} x {p:<2d} | {1e3 * np.median(table[:, 0]):10.2f} {1e3 * np.median(table[:, 1]):10.3f} {ratio:6.0f} {np.median(table[:, 2]):6.0f} {agree:10.1e} | {table[0, 4]:9.2f} {table[0, 5]:8.3f} {table[0, 4] / table[0, 5]:6.0f} | {target}")
+    print(f"largest relative difference of the optimum: {worst:.1e}; {other} of {PLANTS * len(TARGETS)} descents ended in another local minimum")
 
 
 main()

@@ -162,6 +162,34 @@ START_TEST(dual_solves_the_transposed_equation)
 }
 END_TEST
 
+/* Complex pairs that are nearly real and defective, [r b; -e r] with b e -> 0, in every combination: the
+ * coordinates in which a pair is a rotation are far from these, and digits could be lost on the way. */
+START_TEST(nearly_defective_pairs)
+{
+    for (int discrete = 0; discrete < 2; discrete++)
+        for (double e = 1; e > 1e-17; e *= 0.1)
+            for (double f = 1; f > 1e-17; f *= 1e-2) {
+                struct fg_arena arena = {0};
+                struct fg_matrix T = fg_matrix_new(&arena, 4, 4), C = symmetric(&arena, 4);
+                double centre = discrete ? 0.3 : -1, x[16];
+                for (int i = 0; i < 4; i++)
+                    FG_AT(T, i, i) = centre;
+                FG_AT(T, 0, 1) = 0.5;
+                FG_AT(T, 1, 0) = -0.5 * e;
+                FG_AT(T, 2, 3) = -0.5 * f;
+                FG_AT(T, 3, 2) = 0.5;
+                FG_AT(T, 0, 2) = FG_AT(T, 1, 3) = 0.4;
+                kronecker(discrete, T, C, x);
+                struct fg_matrix X = fg_matrix_copy(&arena, C);
+                double *work = fg_arena_doubles(&arena, fg_lyapunov_work(4));
+                fg_lyapunov_schur(discrete, 4, T.at, X.at, work);
+                for (int i = 0; i < 16; i++)
+                    ck_assert_double_eq_tol(X.at[i], x[i], 1e-13 * (1 + fg_matrix_max_abs(X)));
+                fg_arena_release(&arena);
+            }
+}
+END_TEST
+
 START_TEST(unstable_and_not_finite_are_refused)
 {
     struct fg_arena arena = {0};
@@ -185,6 +213,7 @@ int main(void)
     tcase_add_test(all, against_kronecker);
     tcase_add_test(all, large_orders_solve_their_equation);
     tcase_add_test(all, dual_solves_the_transposed_equation);
+    tcase_add_test(all, nearly_defective_pairs);
     tcase_add_test(all, unstable_and_not_finite_are_refused);
     suite_add_tcase(suite, all);
     SRunner *runner = srunner_create(suite);

@@ -185,9 +185,9 @@ END_TEST
 static const double servo_gain[2] = {223.60679774998, 18.69916044876};
 
 /* oscillators: Levine, Athans, IEEE TAC 15 (1970) 44, J(k) = 1/k + 3k/2 and 2/k + 3k/2, derived by hand.
- * scalar_lq: textbook. discrete_scalar_unstable: P^2 - 5.21 P - 5 = 0, J = P, K = 1.1 P / (1 + P). zheng: Zheng,
- * Tang, Li, LQG landscape, example 8: LQR gain [1 1] = 1 C. fatkhullin_polyak: Optimizing static linear
- * feedback, examples 3.1, 3.2, k + 1/k and (1 + sqrt 2) I. feedthrough: F = 1 + sqrt 2 by hand. Servo:
+ * scalar_lq: textbook. discrete_scalar_unstable: P^2 - 5.21 P - 5 = 0, J = P, K = 1.1 P / (1 + P). zheng:
+ * Zheng, Tang, Li, LQG landscape, example 8: LQR gain [1 1] = 1 C. fatkhullin_polyak: Optimizing static
+ * linear feedback, examples 3.1, 3.2, k + 1/k and (1 + sqrt 2) I. feedthrough: F = 1 + sqrt 2 by hand. Servo:
  * Kwakernaak, Sivan, Linear Optimal Control Systems, example 3.8 (printed 223.6, 18.69), all states read. */
 static const struct {
     const char *name;
