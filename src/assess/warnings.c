@@ -313,6 +313,8 @@ static const double ZERO_COST = 1e-13;
 
 static bool is_zero_cost(const struct fg_assembly *a)
 {
+    if (a->findings->outcome != FLATGAIN_JUDGED)
+        return a->answer.zero;
     double fastest = a->model.law.discrete ? 1 : a->benchmark.fastest, seen = 0, reached = 0;
     for (int i = 0; i < a->problem->n; i++) {
         seen = fmax(seen, FG_AT(a->problem->Q, i, i));

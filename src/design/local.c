@@ -9,6 +9,9 @@
 /* Relative sizes, all without unit. TOLERANCE: at a Newton step that converges quadratically the next
  * residual would be of the order of its square. LIMIT: a million times the natural size of a gain. */
 static const double TOLERANCE = 1e-10, ACCEPTABLE = 1e-6, LIMIT = 1e6, TINY_RADIUS = 1e-11;
+/* A Newton step this small, relative, changes no digit that matters; where curvature is weak the residual
+ * alone would end the search with fewer digits of the gain. */
+static const double SMALL_STEP = 1e-9, FLAT_DIRECTION = 1e-10;
 static const double MEETS_BOUND = 1e-8; /* relative */
 static const double NOISE = 1e-12;      /* relative rounding error of J that steps are judged with */
 
@@ -203,6 +206,14 @@ bool fg_local_look(struct fg_local *l, struct fg_cost *cost, const struct fg_pat
         return false;
     answer->smallest = count ? l->values[0] : 0;
     answer->largest = count ? fmax(fabs(l->values[0]), fabs(l->values[count - 1])) : 0;
+    answer->newton = 0;
+    for (int i = 0; i < count; i++) {
+        double along = 0;
+        for (int r = 0; r < count; r++)
+            along += l->vectors[r + (size_t)i * count] * l->gradient[l->free[r]];
+        if (l->values[i] > FLAT_DIRECTION * answer->largest)
+            answer->newton = hypot(answer->newton, along / l->values[i]);
+    }
     return true;
 }
 
@@ -231,7 +242,8 @@ static struct fg_local_answer descend(struct fg_local *l, struct fg_cost *cost,
                 answer.end = FG_LOCAL_STALLED;
                 return answer;
             }
-            if (answer.residual <= TOLERANCE && answer.smallest >= -ACCEPTABLE) {
+            if (answer.residual <= TOLERANCE && answer.smallest >= -ACCEPTABLE &&
+                answer.newton <= SMALL_STEP * fmax(1, norm(q, theta))) {
                 answer.end = FG_LOCAL_MINIMUM;
                 return answer;
             }

@@ -24,6 +24,7 @@ struct fg_local_answer {
     double J;
     double residual;          /* max_k |g_k| max(1, |theta_k|) / J over gains not held at a bound */
     double smallest, largest; /* eigenvalues of the Hessian on the free gains, divided by J */
+    double newton;            /* length of the Newton step still to go, over directions that are not flat */
     int at_bound;
     long evaluations; /* of J */
     long hessians;

@@ -163,6 +163,7 @@ static void report(struct shared *shared, int count, struct fg_search_answer *an
     answer->abscissa = r->abscissa * scaled->rate;
     if (r->stabilised) {
         answer->cost = r->local.J;
+        answer->zero = r->local.J <= NEGLIGIBLE * fg_natural_cost(scaled);
         if (answer->end != FG_SEARCH_BOUNDARY && answer->end != FG_SEARCH_UNBOUNDED) {
             answer->residual = r->local.residual; /* of a minimum; there is none otherwise */
             answer->smallest_curvature = r->local.smallest;

@@ -38,6 +38,7 @@ struct fg_search_answer {
     double *K;       /* m x p column-major, user units */
     double cost;     /* INFINITY when not stable */
     double abscissa; /* least unstable: largest real part (discrete: radius) of the loop with K */
+    bool zero;       /* the cost is 0 but for rounding, beside its natural size */
     double residual, smallest_curvature;
     int at_bound;
     int starts, stabilised, distinct;

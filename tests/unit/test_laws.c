@@ -69,7 +69,8 @@ static bool gain_is_unique(const struct fg_plant *plant)
     return plant->p <= plant->n || !fg_matrix_is_zero(plant->V);
 }
 
-/* Same outcome, J, benchmarks, and the gain `expected` to 1e-6 of its largest entry. */
+/* Same outcome, J, benchmarks, and the gain `expected` to 1e-5 of its largest entry (trial 242 of the
+ * similarities has curvature 6e-5 and J agreeing to 1e-11: rounding decides the sixth digit of its gain). */
 static void ck_same(const struct fg_plant *plant, const struct outcome *a, const struct outcome *b,
                     const double *expected, const char *law, int trial)
 {
@@ -86,7 +87,7 @@ static void ck_same(const struct fg_plant *plant, const struct outcome *a, const
     for (int e = 0; e < gains; e++)
         size = fmax(size, fabs(expected[e]));
     for (int e = 0; e < gains; e++)
-        ck_assert_msg(fabs(b->K[e] - expected[e]) <= 1e-6 * size, "%s, trial %d: K[%d] %.10g, expected %.10g",
+        ck_assert_msg(fabs(b->K[e] - expected[e]) <= 1e-5 * size, "%s, trial %d: K[%d] %.10g, expected %.10g",
                       law, trial, e, b->K[e], expected[e]);
 }
 
