@@ -231,6 +231,8 @@ static const char *summarise(struct fg_assembly *a)
 {
     struct fg_findings *f = a->findings;
     const char *cost = isnan(f->cost) ? "" : fg_words_number(a->arena, f->cost, 6);
+    if (f->outcome == FLATGAIN_TUNED && a->answer.zero)
+        cost = "0 but for rounding";
     switch (f->outcome) {
     case FLATGAIN_TUNED:
         if (a->answer.end == FG_SEARCH_STALLED)

@@ -10,6 +10,8 @@
 static const double THINNER = 1e-3;
 /* A residual as good as any: what Newton's method leaves where J is flat along some direction. */
 static const double GOOD = 1e-8;
+/* In natural units, and relative to J. */
+static const double ROUNDING = 1e-12;
 /* J below the bound by more than this part is rounding at the edge of stability, not a gain. */
 static const double BELOW_BOUND = 1e-6;
 
@@ -62,6 +64,22 @@ static flatgain_status shortest(const struct fg_scaled *scaled, struct fg_cost *
     return FLATGAIN_OK;
 }
 
+/* A gain of rounding size beside the natural one is a 0 that the search could not hit. */
+static void clear_rounding(const struct fg_scaled *scaled, struct fg_cost *cost, double negligible,
+                           struct fg_record *record)
+{
+    const struct fg_pattern *pattern = &scaled->pattern;
+    for (int k = 0; k < pattern->count; k++) {
+        double keep = record->theta[k];
+        if (keep == 0 || fabs(keep) > ROUNDING || pattern->lower[k] > 0 || pattern->upper[k] < 0)
+            continue;
+        record->theta[k] = 0;
+        record->evaluations++;
+        if (!(fg_cost_at(cost, record->theta) <= fmax(record->local.J * (1 + ROUNDING), negligible)))
+            record->theta[k] = keep;
+    }
+}
+
 flatgain_status fg_finish(const struct fg_scaled *scaled, struct fg_cost *cost, struct fg_local *local,
                           const struct fg_local_limits *limits, struct fg_record *record)
 {
@@ -74,6 +92,8 @@ flatgain_status fg_finish(const struct fg_scaled *scaled, struct fg_cost *cost, 
         status = inside_the_margin(scaled, cost, local, limits, record);
     if (status == FLATGAIN_OK && record->local.end == FG_LOCAL_MINIMUM)
         status = shortest(scaled, cost, local, limits, record);
+    if (status == FLATGAIN_OK && record->local.end == FG_LOCAL_MINIMUM)
+        clear_rounding(scaled, cost, limits->negligible, record);
     fg_cost_at(cost, record->theta);
     record->abscissa = fg_cost_abscissa(cost);
     return status;
