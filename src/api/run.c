@@ -28,10 +28,8 @@ static flatgain_status check_options(const flatgain_options *options, flatgain_e
 static flatgain_result *new_result(const flatgain_problem *problem)
 {
     flatgain_result *result = calloc(1, sizeof *result);
-    if (result) {
-        result->problem = (struct flatgain_problem *)problem;
-        atomic_fetch_add(&result->problem->references, 1);
-    }
+    if (result)
+        result->problem = fg_problem_retain(problem);
     return result;
 }
 

@@ -62,7 +62,6 @@ flatgain_status fg_continue_to_infimum(const struct fg_scaled *scaled, struct fg
     answer->evaluations += end.evaluations;
     if (end.J < answer->J || (end.end == FG_LOCAL_MINIMUM && end.J <= answer->J * (1 + 1e-9))) {
         end.evaluations = answer->evaluations;
-        end.hessians += answer->hessians;
         *answer = end;
         memcpy(theta, path, q * sizeof(double));
     }

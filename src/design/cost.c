@@ -94,21 +94,18 @@ struct fg_cost *fg_cost_new(const struct fg_plant *plant, const struct fg_patter
         struct fg_matrix *matrix;
         int rows, cols;
     } shapes[] = {
-        {&c->a, m, m},    {&c->d, p, p},          {&c->F, m, p},          {&c->T, n, n},
-        {&c->Z, n, n},    {&c->Trev, n, n},       {&c->Bs, n, m},         {&c->Cs, p, n},
-        {&c->Hcl, r, n},  {&c->Gcl, n, g + gv},   {&c->Qcl, n, n},        {&c->X, n, n},
-        {&c->P, n, n},    {&c->BF, n, p},         {&c->FC, m, n},         {&c->HuF, r, p},
-        {&c->FGv, m, gv}, {&c->BP, m, n},         {&c->M, m, n},          {&c->Ct, p, n},
-        {&c->XC, n, p},   {&c->MX, m, n},         {&c->Rt, m, m},         {&c->FV, m, p},
-        {&c->G, m, p},    {&c->scratch_mp, m, p}, {&c->scratch_mm, m, m}, {&c->Bt, n, m},
-        {&c->Y, n, n},    {&c->Rr, p, n},         {&c->X1, p, p},         {&c->V1, p, p},
-        {&c->R1, m, m},   {&c->R2, m, m},         {&c->U, m, p},          {&c->VF, p, m},
-        {&c->Da, p, m},   {&c->dXC, n, p},        {&c->Vs, p, p},
+        {&c->a, m, m},          {&c->d, p, p},          {&c->F, m, p},  {&c->T, n, n},   {&c->Z, n, n},
+        {&c->Trev, n, n},       {&c->Bs, n, m},         {&c->Cs, p, n}, {&c->Hcl, r, n}, {&c->Gcl, n, g + gv},
+        {&c->Qcl, n, n},        {&c->X, n, n},          {&c->P, n, n},  {&c->BF, n, p},  {&c->FC, m, n},
+        {&c->HuF, r, p},        {&c->FGv, m, gv},       {&c->BP, m, n}, {&c->M, m, n},   {&c->Ct, p, n},
+        {&c->XC, n, p},         {&c->MX, m, n},         {&c->Rt, m, m}, {&c->FV, m, p},  {&c->G, m, p},
+        {&c->scratch_mp, m, p}, {&c->scratch_mm, m, m}, {&c->Bt, n, m}, {&c->Y, n, n},   {&c->Rr, p, n},
+        {&c->X1, p, p},         {&c->V1, p, p},         {&c->R1, m, m}, {&c->R2, m, m},  {&c->VF, p, m},
+        {&c->Da, p, m},         {&c->dXC, n, p},        {&c->Vs, p, p},
     };
     for (size_t i = 0; i < sizeof shapes / sizeof *shapes; i++)
         *shapes[i].matrix = fg_matrix_new(arena, shapes[i].rows, shapes[i].cols);
     c->K = fg_arena_doubles(arena, (size_t)m * p);
-    c->theta_gain = fg_arena_doubles(arena, (size_t)m * p);
     c->wr = fg_arena_doubles(arena, n);
     c->wi = fg_arena_doubles(arena, n);
     c->Hfull = fg_arena_doubles(arena, (size_t)pattern->count * m * p);
@@ -219,7 +216,7 @@ static double sum_of_products(struct fg_matrix a, struct fg_matrix b)
 /* J = tr(Qcl X) [+ tr(F'R F V)], all in the Schur basis. */
 static double evaluate(struct fg_cost *c)
 {
-    c->usable = c->has_P = false;
+    c->has_P = false;
     c->J = INFINITY;
     if (!close_loop(c))
         return INFINITY;
@@ -250,14 +247,13 @@ static double evaluate(struct fg_cost *c)
     double J = sum_of_products(c->Qcl, c->X) + direct;
     if (!isfinite(J) || J < 0)
         return INFINITY;
-    c->usable = true;
     c->J = J;
     return J;
 }
 
 bool fg_cost_is_posed(struct fg_cost *cost, const double *K)
 {
-    cost->usable = cost->has_P = false;
+    cost->has_P = false;
     memcpy(cost->K, K, (size_t)cost->m * cost->p * sizeof(double));
     return fg_all_finite((size_t)cost->m * cost->p, K) && close_algebraic_loop(cost);
 }
@@ -318,12 +314,6 @@ void fg_cost_need_P(struct fg_cost *c)
         fg_multiply('N', 'T', 1, c->scratch_mp, c->d, 0, c->G);
     }
     c->has_P = true;
-}
-
-void fg_cost_gradient_full(struct fg_cost *cost, double *gradient)
-{
-    fg_cost_need_P(cost);
-    memcpy(gradient, cost->G.at, (size_t)cost->m * cost->p * sizeof(double));
 }
 
 void fg_cost_gradient(struct fg_cost *cost, double *gradient)

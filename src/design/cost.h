@@ -29,9 +29,8 @@ double fg_cost_value(struct fg_cost *cost, const double *K);
 double fg_cost_at(struct fg_cost *cost, const double *theta);
 
 /* Derivatives at the point of the last fg_cost_value / fg_cost_at that returned a finite J. */
-void fg_cost_gradient(struct fg_cost *cost, double *gradient);      /* q */
-void fg_cost_gradient_full(struct fg_cost *cost, double *gradient); /* m x p column-major, dJ/dK */
-void fg_cost_hessian(struct fg_cost *cost, double *hessian);        /* q x q, symmetric */
+void fg_cost_gradient(struct fg_cost *cost, double *gradient); /* q */
+void fg_cost_hessian(struct fg_cost *cost, double *hessian);   /* q x q, symmetric */
 
 /* Of the last point, also an unstable one: largest real part (radius in the discrete setting), and the
  * closed-loop poles. NAN when ill posed. */

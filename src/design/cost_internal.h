@@ -17,7 +17,6 @@ struct fg_cost {
     struct fg_matrix Hx, Hu, Gw, Gv;
 
     /* the point */
-    bool usable; /* finite J: derivatives may be asked for */
     bool has_P;
     double J, abscissa;
     double *K;                /* m x p */
@@ -29,11 +28,11 @@ struct fg_cost {
 
     /* derivatives */
     struct fg_matrix BP, M, Ct, XC, MX, Rt, FV, G, scratch_mp, scratch_mm;
-    struct fg_matrix Bt, Y, Rr, X1, V1, R1, R2, U, VF, Da, dXC, Vs;
+    struct fg_matrix Bt, Y, Rr, X1, V1, R1, R2, VF, Da, dXC, Vs;
     double *Hfull;      /* U of every parameter: q x (m p) */
     int *first, *entry; /* entries of parameter k: entry[first[k]] .. entry[first[k+1] - 1], as i + j m */
 
-    double *schur_work, *lyapunov_work, *theta_gain;
+    double *schur_work, *lyapunov_work;
     int schur_lwork;
     int *pivots;
     int *select;          /* n */

@@ -237,7 +237,6 @@ static struct fg_local_answer descend(struct fg_local *l, struct fg_cost *cost,
                 answer.residual = answer.smallest = answer.largest = 0;
                 return answer;
             }
-            answer.hessians++;
             if (!fg_local_look(l, cost, pattern, theta, &answer)) {
                 answer.end = FG_LOCAL_STALLED;
                 return answer;

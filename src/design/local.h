@@ -27,7 +27,6 @@ struct fg_local_answer {
     double newton;            /* length of the Newton step still to go, over directions that are not flat */
     int at_bound;
     long evaluations; /* of J */
-    long hessians;
 };
 
 struct fg_local_limits {
